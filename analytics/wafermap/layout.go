@@ -1,0 +1,84 @@
+package wafermap
+
+import (
+	"fmt"
+	"math"
+
+	"epitally/analytics"
+)
+
+// Layout is the die grid of a product on its wafer.
+type Layout struct {
+	Name            string  `json:"name"`
+	WaferDiameterMM float64 `json:"wafer_diameter_mm"`
+	DiePitchXMM     float64 `json:"die_pitch_x_mm"`
+	DiePitchYMM     float64 `json:"die_pitch_y_mm"`
+	EdgeExclusionMM float64 `json:"edge_exclusion_mm"` // ring inside the edge where no die is counted
+	Mark            string  `json:"mark"`              // "flat", "notch" or "none"
+	MarkAngleDeg    float64 `json:"mark_angle_deg"`    // direction of the mark from the centre; 0 = right, 90 = up, 270 = down
+	XAxis           string  `json:"x_axis"`            // where die x grows: "right" or "left"
+	YAxis           string  `json:"y_axis"`            // where die y grows: "up" or "down"
+	CentreX         float64 `json:"centre_x"`          // die coordinates (may be fractional) of the wafer's centre
+	CentreY         float64 `json:"centre_y"`
+	Assumed         bool    `json:"assumed"` // true: guessed from the measurement, no product layout is known
+}
+
+// Validate returns an analytics.ErrInvalid error naming the field and the rule.
+func (l *Layout) Validate() error {
+	bad := func(field string, rule string, args ...any) error {
+		return fmt.Errorf("layout %q: %s: %s: %w", l.Name, field, fmt.Sprintf(rule, args...), analytics.ErrInvalid)
+	}
+	switch {
+	case !(l.WaferDiameterMM > 0 && l.WaferDiameterMM <= 500):
+		return bad("wafer_diameter_mm", "%g is not between 0 and 500", l.WaferDiameterMM)
+	case !(l.DiePitchXMM > 0.01 && l.DiePitchXMM <= l.WaferDiameterMM):
+		return bad("die_pitch_x_mm", "%g is not between 0.01 and the diameter", l.DiePitchXMM)
+	case !(l.DiePitchYMM > 0.01 && l.DiePitchYMM <= l.WaferDiameterMM):
+		return bad("die_pitch_y_mm", "%g is not between 0.01 and the diameter", l.DiePitchYMM)
+	case !(l.EdgeExclusionMM >= 0 && l.EdgeExclusionMM < l.WaferDiameterMM/2):
+		return bad("edge_exclusion_mm", "%g is not between 0 and the radius", l.EdgeExclusionMM)
+	case l.Mark != "flat" && l.Mark != "notch" && l.Mark != "none":
+		return bad("mark", "%q is not flat, notch or none", l.Mark)
+	case l.XAxis != "right" && l.XAxis != "left":
+		return bad("x_axis", "%q is not right or left", l.XAxis)
+	case l.YAxis != "up" && l.YAxis != "down":
+		return bad("y_axis", "%q is not up or down", l.YAxis)
+	case math.IsNaN(l.CentreX + l.CentreY + l.MarkAngleDeg):
+		return bad("centre_x, centre_y, mark_angle_deg", "not a number")
+	}
+	return nil
+}
+
+// PositionMM is the centre of die (x, y) in mm from the wafer's centre, x to
+// the right and y up.
+func (l *Layout) PositionMM(x, y int) (xMM, yMM float64) {
+	xMM, yMM = (float64(x)-l.CentreX)*l.DiePitchXMM, (float64(y)-l.CentreY)*l.DiePitchYMM
+	if l.XAxis == "left" {
+		xMM = -xMM
+	}
+	if l.YAxis == "down" {
+		yMM = -yMM
+	}
+	return xMM, yMM
+}
+
+// RadiusMM is the distance of the centre of die (x, y) from the wafer's centre.
+func (l *Layout) RadiusMM(x, y int) float64 {
+	xMM, yMM := l.PositionMM(x, y)
+	return math.Hypot(xMM, yMM)
+}
+
+// Inside reports whether die (x, y) counts: all four of its corners lie within
+// the circle that the edge exclusion leaves (radius = diameter/2 − exclusion).
+// A flat is not cut out.
+func (l *Layout) Inside(x, y int) bool {
+	xMM, yMM := l.PositionMM(x, y)
+	r := l.WaferDiameterMM/2 - l.EdgeExclusionMM
+	far := math.Hypot(math.Abs(xMM)+l.DiePitchXMM/2, math.Abs(yMM)+l.DiePitchYMM/2)
+	return far <= r*(1+1e-12)
+}
+
+// OnWafer reports whether the centre of die (x, y) lies on the wafer at all.
+func (l *Layout) OnWafer(x, y int) bool {
+	return l.RadiusMM(x, y) <= l.WaferDiameterMM/2*(1+1e-12)
+}
