@@ -38,6 +38,7 @@ func commands() []command {
 		{"demo", "grow an invented fab, load it through the drop folder and serve it", demo},
 		{"calc summary", "summarise one column of a CSV file", calcSummary},
 		{"gallery", "write every page from canned data as files, without a database", gallery},
+		{"health", "ask a running server whether it is ready", health},
 		{"version", "print the version", printVersion},
 	}
 }
