@@ -23,17 +23,31 @@ type Layout struct {
 	Assumed         bool    `json:"assumed"` // true: guessed from the measurement, no product layout is known
 }
 
+// Limits of a layout. Die coordinates are 16-bit, so a centre lies among them;
+// an assumed layout may count in dies instead of millimetres, which takes more
+// than any wafer's diameter.
+const (
+	minPitchMM       = 0.01
+	maxDiameterMM    = 500
+	maxAssumedLength = 1e6
+	maxCentre        = 1 << 15
+)
+
 // Validate returns an analytics.ErrInvalid error naming the field and the rule.
 func (l *Layout) Validate() error {
 	bad := func(field string, rule string, args ...any) error {
 		return fmt.Errorf("layout %q: %s: %s: %w", l.Name, field, fmt.Sprintf(rule, args...), analytics.ErrInvalid)
 	}
+	longest := float64(maxDiameterMM)
+	if l.Assumed {
+		longest = maxAssumedLength
+	}
 	switch {
-	case !(l.WaferDiameterMM > 0 && l.WaferDiameterMM <= 500):
-		return bad("wafer_diameter_mm", "%g is not between 0 and 500", l.WaferDiameterMM)
-	case !(l.DiePitchXMM > 0.01 && l.DiePitchXMM <= l.WaferDiameterMM):
+	case !(l.WaferDiameterMM > 0 && l.WaferDiameterMM <= longest):
+		return bad("wafer_diameter_mm", "%g is not between 0 and %g", l.WaferDiameterMM, longest)
+	case !(l.DiePitchXMM > minPitchMM && l.DiePitchXMM <= l.WaferDiameterMM):
 		return bad("die_pitch_x_mm", "%g is not between 0.01 and the diameter", l.DiePitchXMM)
-	case !(l.DiePitchYMM > 0.01 && l.DiePitchYMM <= l.WaferDiameterMM):
+	case !(l.DiePitchYMM > minPitchMM && l.DiePitchYMM <= l.WaferDiameterMM):
 		return bad("die_pitch_y_mm", "%g is not between 0.01 and the diameter", l.DiePitchYMM)
 	case !(l.EdgeExclusionMM >= 0 && l.EdgeExclusionMM < l.WaferDiameterMM/2):
 		return bad("edge_exclusion_mm", "%g is not between 0 and the radius", l.EdgeExclusionMM)
@@ -43,8 +57,10 @@ func (l *Layout) Validate() error {
 		return bad("x_axis", "%q is not right or left", l.XAxis)
 	case l.YAxis != "up" && l.YAxis != "down":
 		return bad("y_axis", "%q is not up or down", l.YAxis)
-	case math.IsNaN(l.CentreX + l.CentreY + l.MarkAngleDeg):
-		return bad("centre_x, centre_y, mark_angle_deg", "not a number")
+	case !(math.Abs(l.CentreX) <= maxCentre && math.Abs(l.CentreY) <= maxCentre):
+		return bad("centre_x, centre_y", "(%g, %g) is not among die coordinates, which lie within ±%d", l.CentreX, l.CentreY, maxCentre)
+	case !(math.Abs(l.MarkAngleDeg) <= 360):
+		return bad("mark_angle_deg", "%g is not between -360 and 360", l.MarkAngleDeg)
 	}
 	return nil
 }
