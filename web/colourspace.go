@@ -3,6 +3,7 @@ package web
 import (
 	"fmt"
 	"math"
+	"strconv"
 )
 
 // RGB is a colour in sRGB, 8 bits a channel.
@@ -88,9 +89,9 @@ func contrast(a, b RGB) float64 {
 
 // mustHex reads rrggbb of a table of ours.
 func mustHex(s string) RGB {
-	var c RGB
-	if _, err := fmt.Sscanf(s, "%02x%02x%02x", &c.R, &c.G, &c.B); err != nil {
+	v, err := strconv.ParseUint(s, 16, 24)
+	if err != nil {
 		panic("colour table: " + s)
 	}
-	return c
+	return RGB{uint8(v >> 16), uint8(v >> 8), uint8(v)}
 }

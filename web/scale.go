@@ -3,6 +3,7 @@ package web
 import (
 	"math"
 	"strings"
+	"sync"
 
 	"epitally/analytics/quantity"
 	"epitally/analytics/uniformity"
@@ -79,6 +80,9 @@ func NewPalettes() Palettes {
 		},
 	}
 }
+
+// palettes are made once: they are constants that take arithmetic.
+var palettes = sync.OnceValue(NewPalettes)
 
 // shades splits a scale of rrggbb.
 func shades(scale string) []RGB {
