@@ -1,9 +1,11 @@
-// Package binning puts dies into the bins of a specification.
 package binning
 
 import (
-	"errors"
+	"fmt"
+	"math/big"
+	"sync"
 
+	"epitally/analytics"
 	"epitally/analytics/wafermap"
 )
 
@@ -20,21 +22,40 @@ const (
 // String is the word used in tallies: sellable, unsellable, reject, untested.
 func (c Class) String() string { return [...]string{"sellable", "unsellable", "reject", "untested"}[c] }
 
-// Spec is a parsed specification document.
+// UntestedName is the name of the code of dies that lack a value.
+const UntestedName = "untested"
+
+// Spec is a parsed specification document. It does not change after Parse and
+// may be used by several goroutines at once.
 type Spec struct {
 	Name     string
 	Title    string
 	Kind     string
 	Products []string
-	// the rest is the builder's
+
+	axes    []Axis
+	rules   []Rule
+	cells   []Cell
+	plans   []plan   // per quantity, in the order of Quantities
+	terms   []uint32 // verdict of each conjunction that spans quantities, first rule first
+	missing uint32   // verdict of a die that lacks a value
+	binners sync.Pool
 }
 
-// Parse reads a specification document (YAML). Every error is an
-// *analytics.Fault with line and key.
-func Parse(document []byte) (*Spec, error) { return nil, errors.New("not built yet") }
+// Axis is one axis of the bins.
+type Axis struct {
+	Name     string
+	Quantity string
+	Edges    []float64 // ascending; cell i is [Edges[i], Edges[i+1])
+	Names    []string  // of the cells
+	Guard    float64   // taken off every cell on each side
+}
 
-// Quantities names what the spec needs, in the order Bin wants the planes.
-func (s *Spec) Quantities() []string { return nil }
+// Rule is one reject rule.
+type Rule struct {
+	Reason string
+	When   string
+}
 
 // Cell is what one code stands for.
 type Cell struct {
@@ -42,15 +63,96 @@ type Cell struct {
 	Class Class
 }
 
-// Cells lists the meaning of every code that Bin can give, code = index: bins
-// first in the spec's order, then reject reasons in rule order, then untested.
-func (s *Spec) Cells() []Cell { return nil }
+// Quantities names what the spec needs, in the order Bin wants the planes:
+// by first mention, axes before reject rules.
+func (s *Spec) Quantities() []string {
+	names := make([]string, len(s.plans))
+	for i := range s.plans {
+		names[i] = s.plans[i].quantity
+	}
+	return names
+}
 
-// Bin writes the code of every die to dst (len = dies) and the dies per code to
-// counts (len = len(Cells())), counting only dies where include is true (nil =
-// all). planes are in the order of Quantities; a nil plane means the
-// measurement does not have that quantity, so its dies are untested. It does
-// not allocate per die.
+// Axes lists the axes in the document's order. Read only.
+func (s *Spec) Axes() []Axis { return s.axes }
+
+// Rules lists the reject rules in the order they are tried. Read only.
+func (s *Spec) Rules() []Rule { return s.rules }
+
+// Cells lists the meaning of every code that Bin can give, code = index: bins
+// first in the spec's order (the last axis varies fastest), then reject reasons
+// in rule order, then the reasons of the axes' ends and guards, then untested.
+// Read only.
+func (s *Spec) Cells() []Cell { return s.cells }
+
+// Bin writes the code of every die to dst (len = dies; nil = only count) and the
+// dies per code to counts (len = len(Cells())), counting only dies where include
+// is true (nil = all). planes are in the order of Quantities; a nil plane means
+// the measurement does not have that quantity, so its dies are untested. It does
+// not allocate per die. Slices of unequal length are analytics.ErrInvalid.
+//
+// Whoever bins many wafers keeps a Binner instead.
 func (s *Spec) Bin(dst []uint16, counts []int, planes []*wafermap.Plane, include []bool) error {
-	return errors.New("not built yet")
+	b, _ := s.binners.Get().(*Binner)
+	if b == nil {
+		b = s.NewBinner()
+	}
+	defer s.binners.Put(b)
+	return b.Bin(dst, counts, planes, include)
+}
+
+// A verdict is 32 bits for one value of one quantity. Verdicts of the spec's
+// quantities are joined without branching on what they mean:
+//
+//   - within every rule and axis: the high half is 0 and the low half is the
+//     quantity's share of the bin's code, so that the sum of all verdicts is the code;
+//   - a reject: the high half ranks it (untested highest, then rules from the
+//     first on, then axes) and the low half is its code, so that the largest
+//     verdict names what the die is rejected for.
+type plan struct {
+	quantity string
+	cuts     []cut    // ascending
+	verdicts []uint32 // per region between cuts: len(cuts) + 1
+	masks    []uint64 // per region, bit t: this quantity does not rule term t out; nil when no term spans quantities
+}
+
+// cut is a place on the axis of real numbers that something changes at: values
+// from at on lie beyond it, or, when after is set, only values above at.
+type cut struct {
+	at    *big.Rat
+	after bool
+}
+
+func (c cut) compare(d cut) int {
+	if order := c.at.Cmp(d.at); order != 0 || c.after == d.after {
+		return order
+	}
+	if c.after {
+		return 1
+	}
+	return -1
+}
+
+// threshold is the smallest integer k whose value k·10^exponent lies beyond the
+// cut, limited to ±2^62.
+func (c cut) threshold(exponent int) int64 {
+	num, den := new(big.Int).Set(c.at.Num()), new(big.Int).Set(c.at.Denom())
+	scale := new(big.Int).Exp(big.NewInt(10), big.NewInt(int64(max(exponent, -exponent))), nil)
+	if exponent < 0 {
+		num.Mul(num, scale)
+	} else {
+		den.Mul(den, scale)
+	}
+	floor, rest := new(big.Int).DivMod(num, den, new(big.Int)) // Euclidean: rounds down for a positive divisor
+	if c.after || rest.Sign() != 0 {
+		floor.Add(floor, big.NewInt(1))
+	}
+	if floor.BitLen() > 62 {
+		return int64(floor.Sign()) << 62
+	}
+	return floor.Int64()
+}
+
+func invalid(format string, args ...any) error {
+	return fmt.Errorf(format+": %w", append(args, analytics.ErrInvalid)...)
 }

@@ -1,0 +1,336 @@
+package binning
+
+import (
+	"fmt"
+	"math/big"
+	"slices"
+	"strings"
+)
+
+// build works a draft into codes and verdicts.
+func (d *draft) build() (*Spec, error) {
+	if d.pattern == "" {
+		if d.pattern = "good"; len(d.axes) > 0 {
+			d.pattern = ""
+			for _, a := range d.axes {
+				d.pattern += "{" + a.Name + "}"
+			}
+		}
+	}
+	for _, a := range d.axes {
+		d.spec.axes = append(d.spec.axes, a.Axis)
+	}
+	if err := d.nameBins(); err != nil {
+		return nil, err
+	}
+	codes, err := d.addReasons()
+	if err != nil {
+		return nil, err
+	}
+	return d.spec, d.compile(codes)
+}
+
+// binsAt gives the place for faults about bin names.
+func (d *draft) binsAt() node {
+	if d.patternN.Node != nil {
+		return d.patternN
+	}
+	return d.root
+}
+
+// nameBins lists the bins, the last axis varying fastest.
+func (d *draft) nameBins() error {
+	total := 1
+	for _, a := range d.axes {
+		if total *= len(a.Names); total >= maxCodes {
+			return tooLarge(a.at, fmt.Sprintf("the axes make %d bins or more, over the limit of %d codes", total, maxCodes))
+		}
+	}
+	parts, err := d.splitPattern()
+	if err != nil {
+		return err
+	}
+	names := make(map[string]bool, total)
+	sold := make([]bool, len(d.sellable))
+	for i := range total {
+		name := d.binName(parts, i)
+		switch {
+		case len(name) > 4*maxName:
+			return d.binsAt().fault("", "the bin name %q is over %d bytes", name, 4*maxName)
+		case names[name]:
+			return d.binsAt().fault("name every axis in the pattern, and give its cells names that cannot run together", "two bins are named %q", name)
+		case name == UntestedName:
+			return d.binsAt().fault("", "%q cannot name a bin", name)
+		}
+		names[name] = true
+		class := Unsellable
+		if d.all {
+			class = Sellable
+		}
+		for j, p := range d.sellable {
+			if matches(p.text, name) {
+				class, sold[j] = Sellable, true
+			}
+		}
+		d.spec.cells = append(d.spec.cells, Cell{name, class})
+	}
+	for j, p := range d.sellable {
+		if !sold[j] {
+			return p.at.fault("* stands for any text; the first bin is "+d.spec.cells[0].Name, "the pattern %q matches no bin", p.text)
+		}
+	}
+	return nil
+}
+
+// part of a bin name's pattern: literal text, then the cell of an axis (-1 = none).
+type part struct {
+	literal string
+	axis    int
+}
+
+func (d *draft) splitPattern() ([]part, error) {
+	var parts []part
+	for rest := d.pattern; rest != ""; {
+		literal, after, open := strings.Cut(rest, "{")
+		if strings.Contains(literal, "}") {
+			return nil, d.binsAt().fault("", "a } without its { in the bin name %q", d.pattern)
+		}
+		if !open {
+			return append(parts, part{literal, -1}), nil
+		}
+		name, behind, closed := strings.Cut(after, "}")
+		if !closed {
+			return nil, d.binsAt().fault("", "a { without its } in the bin name %q", d.pattern)
+		}
+		axis := slices.IndexFunc(d.axes, func(a draftAxis) bool { return a.Name == name })
+		if axis < 0 {
+			return nil, d.binsAt().fault("", "the bin name %q refers to the axis %q, which does not exist", d.pattern, name)
+		}
+		parts, rest = append(parts, part{literal, axis}), behind
+	}
+	return parts, nil
+}
+
+func (d *draft) binName(parts []part, bin int) string {
+	cells := make([]int, len(d.axes))
+	for a := len(d.axes) - 1; a >= 0; a-- {
+		n := len(d.axes[a].Names)
+		cells[a], bin = bin%n, bin/n
+	}
+	var b strings.Builder
+	for _, p := range parts {
+		b.WriteString(p.literal)
+		if p.axis >= 0 {
+			b.WriteString(d.axes[p.axis].Names[cells[p.axis]])
+		}
+	}
+	return b.String()
+}
+
+// matches reports whether name fits pattern, in which * stands for any text and
+// ? for one byte.
+func matches(pattern, name string) bool {
+	p, n, star, mark := 0, 0, -1, 0
+	for n < len(name) {
+		switch {
+		case p < len(pattern) && pattern[p] == '*':
+			star, mark = p, n
+			p++
+		case p < len(pattern) && (pattern[p] == '?' || pattern[p] == name[n]):
+			p, n = p+1, n+1
+		case star >= 0: // let the last * take one more
+			mark++
+			p, n = star+1, mark
+		default:
+			return false
+		}
+	}
+	return strings.Trim(pattern[p:], "*") == ""
+}
+
+// addReasons gives every reject reason its code; the same reason in two places
+// is one code. untested comes last.
+func (d *draft) addReasons() (map[string]uint32, error) {
+	bins := make(map[string]bool, len(d.spec.cells))
+	for _, c := range d.spec.cells {
+		bins[c.Name] = true
+	}
+	codes := map[string]uint32{}
+	add := func(reason string, at node) error {
+		if bins[reason] {
+			return at.fault("", "%q names a bin and a reject reason", reason)
+		}
+		if _, known := codes[reason]; !known {
+			codes[reason] = uint32(len(d.spec.cells))
+			d.spec.cells = append(d.spec.cells, Cell{reason, Reject})
+		}
+		return nil
+	}
+	for _, r := range d.rules {
+		if err := add(r.reason, r.when); err != nil {
+			return nil, err
+		}
+	}
+	for _, a := range d.axes {
+		reasons := []string{a.below, a.above}
+		if a.guard.Sign() > 0 {
+			reasons = append(reasons, a.inner)
+		}
+		for _, reason := range reasons {
+			if err := add(reason, a.at); err != nil {
+				return nil, err
+			}
+		}
+	}
+	if len(d.spec.cells) >= maxCodes {
+		return nil, tooLarge(d.root, fmt.Sprintf("bins and reject reasons are %d codes, over the limit of %d", len(d.spec.cells), maxCodes-1))
+	}
+	codes[UntestedName] = uint32(len(d.spec.cells))
+	d.spec.cells = append(d.spec.cells, Cell{UntestedName, Untested})
+	return codes, nil
+}
+
+// rank orders rejects: 0 is the first to be tried.
+func verdict(rank int, code uint32) uint32 { return uint32(0xffff-rank)<<16 | code }
+
+// compile cuts every quantity's values into regions and gives each its verdict.
+func (d *draft) compile(codes map[string]uint32) error {
+	s := d.spec
+	s.missing = verdict(0, codes[UntestedName])
+	d.collectCuts()
+	for i := range s.plans {
+		p := &s.plans[i]
+		slices.SortFunc(p.cuts, cut.compare)
+		p.cuts = slices.CompactFunc(p.cuts, func(a, b cut) bool { return a.compare(b) == 0 })
+		p.verdicts = make([]uint32, len(p.cuts)+1)
+	}
+	stride := make([]uint32, len(d.axes))
+	for a, step := len(d.axes)-1, 1; a >= 0; a-- {
+		stride[a], step = uint32(step), step*len(d.axes[a].Names)
+	}
+	for a := range d.axes {
+		p := d.plan(d.axes[a].Quantity)
+		first := 1 + len(d.rules) + 3*a
+		for region := range p.verdicts {
+			p.verdicts[region] = join(p.verdicts[region], d.axes[a].verdict(p, region, first, stride[a], codes))
+		}
+	}
+	for r, rule := range d.rules {
+		for _, t := range rule.terms {
+			if err := d.compileTerm(rule, t, verdict(1+r, codes[rule.reason])); err != nil {
+				return err
+			}
+		}
+	}
+	return nil
+}
+
+// join puts two verdicts on one quantity together: rejects outrank cells, cells add.
+func join(a, b uint32) uint32 {
+	if a < 1<<16 && b < 1<<16 {
+		return a + b
+	}
+	return max(a, b)
+}
+
+func (d *draft) plan(quantity string) *plan {
+	i := slices.IndexFunc(d.spec.plans, func(p plan) bool { return p.quantity == quantity })
+	if i < 0 {
+		i = len(d.spec.plans)
+		d.spec.plans = append(d.spec.plans, plan{quantity: quantity})
+	}
+	return &d.spec.plans[i]
+}
+
+func (d *draft) collectCuts() {
+	for _, a := range d.axes {
+		p := d.plan(a.Quantity)
+		p.cuts = append(p.cuts, cut{a.edges[0], false}, cut{a.edges[len(a.edges)-1], true})
+		for i := range a.Names {
+			low, high := a.cell(i)
+			p.cuts = append(p.cuts, low, high)
+		}
+	}
+	for _, r := range d.rules {
+		for _, t := range r.terms {
+			for _, at := range t {
+				p := d.plan(at.quantity)
+				p.cuts = append(p.cuts, at.cut)
+			}
+		}
+	}
+}
+
+// cell gives the cuts between which values are in cell i: half-open, the last
+// cell closed, shrunk by the guard.
+func (a *draftAxis) cell(i int) (low, high cut) {
+	low.at = new(big.Rat).Add(a.edges[i], a.guard)
+	high.at = new(big.Rat).Sub(a.edges[i+1], a.guard)
+	high.after = i == len(a.Names)-1
+	return low, high
+}
+
+// verdict of one region of the axis's quantity. Its rejects rank from first on.
+func (a *draftAxis) verdict(p *plan, region, first int, stride uint32, codes map[string]uint32) uint32 {
+	if !p.beyond(region, cut{a.edges[0], false}) {
+		return verdict(first, codes[a.below])
+	}
+	if p.beyond(region, cut{a.edges[len(a.edges)-1], true}) {
+		return verdict(first+1, codes[a.above])
+	}
+	for i := range a.Names {
+		if low, high := a.cell(i); p.beyond(region, low) && !p.beyond(region, high) {
+			return uint32(i) * stride
+		}
+	}
+	return verdict(first+2, codes[a.inner])
+}
+
+// beyond reports whether the values of a region lie beyond one of the plan's cuts.
+func (p *plan) beyond(region int, c cut) bool {
+	i, _ := slices.BinarySearchFunc(p.cuts, c, cut.compare)
+	return region > i
+}
+
+// holds reports whether every atom about the plan's quantity holds in the region.
+func (p *plan) holds(t term, region int) bool {
+	for _, a := range t {
+		if a.quantity == p.quantity && p.beyond(region, a.cut) != a.beyond {
+			return false
+		}
+	}
+	return true
+}
+
+// compileTerm folds a conjunction on one quantity into that quantity's verdicts,
+// and gives one that spans quantities a bit of every quantity's masks.
+func (d *draft) compileTerm(r draftRule, t term, v uint32) error {
+	s := d.spec
+	single := !slices.ContainsFunc(t, func(a atom) bool { return a.quantity != t[0].quantity })
+	if single {
+		p := d.plan(t[0].quantity)
+		for region := range p.verdicts {
+			if p.holds(t, region) {
+				p.verdicts[region] = max(p.verdicts[region], v)
+			}
+		}
+		return nil
+	}
+	bit := len(s.terms)
+	if bit == 64 {
+		return r.when.fault("", "the rules join quantities by \"and\" in more than 64 alternatives")
+	}
+	s.terms = append(s.terms, v)
+	for i := range s.plans {
+		p := &s.plans[i]
+		if p.masks == nil {
+			p.masks = make([]uint64, len(p.verdicts))
+		}
+		for region := range p.masks {
+			if p.holds(t, region) {
+				p.masks[region] |= 1 << bit
+			}
+		}
+	}
+	return nil
+}

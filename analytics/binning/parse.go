@@ -1,0 +1,383 @@
+package binning
+
+import (
+	"fmt"
+	"math/big"
+	"regexp"
+	"strings"
+
+	"epitally/analytics"
+	"epitally/analytics/quantity"
+
+	"github.com/goccy/go-yaml/ast"
+)
+
+// Limits of a specification.
+const (
+	maxRules = 1000
+	maxAxes  = 16
+	maxEdges = 1001
+	maxCodes = 65535 // bins, reject reasons and untested together
+	maxName  = 63
+	maxText  = 200
+	maxWhen  = 4000
+)
+
+var nameRule = regexp.MustCompile(`^[A-Za-z0-9][A-Za-z0-9_.-]{0,62}$`)
+
+// Parse reads a specification document (YAML, see the package comment). Every
+// error is an *analytics.Fault with line, column and key.
+func Parse(document []byte) (*Spec, error) {
+	root, err := readDocument(document)
+	if err != nil {
+		return nil, err
+	}
+	d, err := parseSpec(root)
+	if err != nil {
+		return nil, err
+	}
+	return d.build()
+}
+
+// draft is a document that has been read but not yet worked into codes.
+type draft struct {
+	spec     *Spec
+	rules    []draftRule
+	axes     []draftAxis
+	root     node
+	pattern  string
+	patternN node
+	all      bool // every bin is sellable
+	sellable []draftPattern
+}
+
+type draftRule struct {
+	reason string
+	terms  []term
+	when   node
+}
+
+type draftAxis struct {
+	Axis
+	edges               []*big.Rat
+	guard               *big.Rat
+	below, above, inner string // reject reasons; inner is that of the guard band
+	at                  node
+}
+
+type draftPattern struct {
+	text string
+	at   node
+}
+
+func parseSpec(root node) (*draft, error) {
+	f, err := root.fields("specification!", "title", "kind!", "products", "rejects", "axes", "bins")
+	if err != nil {
+		return nil, err
+	}
+	d := &draft{spec: &Spec{}, root: root}
+	if d.spec.Name, err = f["specification"].text(maxName); err != nil {
+		return nil, err
+	}
+	if !nameRule.MatchString(d.spec.Name) {
+		return nil, f["specification"].fault("use letters, digits, -, _ and .", "%q cannot name a specification", d.spec.Name)
+	}
+	if d.spec.Kind, err = f["kind"].text(maxName); err != nil {
+		return nil, err
+	}
+	if !quantity.ValidName(d.spec.Kind) {
+		return nil, f["kind"].fault("use the measurement's kind, such as probe or pl", "%q cannot name a kind", d.spec.Kind)
+	}
+	if n, ok := f["title"]; ok {
+		if d.spec.Title, err = n.text(maxText); err != nil {
+			return nil, err
+		}
+	}
+	for _, part := range []struct {
+		key  string
+		read func(*draft, node) error
+	}{{"products", (*draft).readProducts}, {"rejects", (*draft).readRejects}, {"axes", (*draft).readAxes}, {"bins", (*draft).readBins}} {
+		if n, ok := f[part.key]; ok {
+			if err := part.read(d, n); err != nil {
+				return nil, err
+			}
+		}
+	}
+	if len(d.rules) == 0 && len(d.axes) == 0 {
+		return nil, root.fault("add rejects, axes or both", "the specification tests nothing")
+	}
+	return d, nil
+}
+
+func (d *draft) readProducts(n node) error {
+	items, err := n.items(maxRules)
+	if err != nil {
+		return err
+	}
+	seen := map[string]bool{}
+	for _, item := range items {
+		name, err := item.text(maxText)
+		if err != nil {
+			return err
+		}
+		if seen[name] {
+			return item.fault("", "product %q stands twice", name)
+		}
+		seen[name] = true
+		d.spec.Products = append(d.spec.Products, name)
+	}
+	return nil
+}
+
+func (d *draft) readRejects(n node) error {
+	items, err := n.items(maxRules)
+	if err != nil {
+		return err
+	}
+	for _, item := range items {
+		f, err := item.fields("reason!", "when!")
+		if err != nil {
+			return err
+		}
+		r := draftRule{when: f["when"]}
+		if r.reason, err = reason(f["reason"]); err != nil {
+			return err
+		}
+		text, err := f["when"].text(maxWhen)
+		if err != nil {
+			return err
+		}
+		terms, wrong := parseCondition(text)
+		if wrong != nil {
+			return conditionFault(f["when"], text, wrong)
+		}
+		r.terms = terms
+		d.rules = append(d.rules, r)
+		d.spec.rules = append(d.spec.rules, Rule{Reason: r.reason, When: text})
+	}
+	return nil
+}
+
+func reason(n node) (string, error) {
+	s, err := n.text(maxName)
+	if err == nil && (s == UntestedName || strings.ContainsAny(s, "\n\t")) {
+		return "", n.fault("", "%q cannot be a reject reason", s)
+	}
+	return s, err
+}
+
+// conditionFault moves the fault's column to the place in the text where that
+// can be told: text on one line, right after the value's first character.
+func conditionFault(n node, text string, wrong *conditionError) error {
+	f := n.fault(wrong.remedy, "%s", wrong.problem)
+	t := n.GetToken()
+	origin := strings.TrimLeft(t.Origin, " ")
+	if lead := strings.Index(origin, text); lead >= 0 && !strings.Contains(text, "\n") && f.Column > 0 {
+		if _, plain := n.Node.(*ast.StringNode); plain {
+			f.Column += lead + wrong.offset
+		}
+	}
+	return f
+}
+
+func (d *draft) readAxes(n node) error {
+	items, err := n.items(maxAxes)
+	if err != nil {
+		return err
+	}
+	seen := map[string]bool{}
+	for _, item := range items {
+		a, err := readAxis(item)
+		if err != nil {
+			return err
+		}
+		if seen[a.Name] {
+			return item.fault("", "axis %q stands twice", a.Name)
+		}
+		seen[a.Name] = true
+		d.axes = append(d.axes, a)
+	}
+	return nil
+}
+
+func readAxis(n node) (a draftAxis, err error) {
+	f, err := n.fields("axis!", "quantity!", "edges!", "names", "below", "above", "guard", "guard_reason")
+	if err != nil {
+		return a, err
+	}
+	a.at = n
+	if a.Name, err = f["axis"].text(maxName); err != nil {
+		return a, err
+	}
+	if !nameRule.MatchString(a.Name) {
+		return a, f["axis"].fault("use letters, digits, -, _ and .", "%q cannot name an axis", a.Name)
+	}
+	if a.Quantity, err = f["quantity"].text(maxName); err != nil {
+		return a, err
+	}
+	if !quantity.ValidName(a.Quantity) {
+		return a, f["quantity"].fault("use lower-case letters, digits and underscores, a letter first", "%q cannot name a quantity", a.Quantity)
+	}
+	if err := a.readEdges(f["edges"]); err != nil {
+		return a, err
+	}
+	if err := a.readGuard(f); err != nil {
+		return a, err
+	}
+	a.below, a.above, a.inner = a.Name+" below", a.Name+" above", "guard"
+	for key, to := range map[string]*string{"below": &a.below, "above": &a.above, "guard_reason": &a.inner} {
+		if n, ok := f[key]; ok {
+			if *to, err = reason(n); err != nil {
+				return a, err
+			}
+		}
+	}
+	return a, a.readNames(f)
+}
+
+func (a *draftAxis) readEdges(n node) error {
+	items, err := n.items(maxEdges)
+	if err != nil {
+		return err
+	}
+	if len(items) < 2 {
+		return n.fault("", "an axis needs at least two edges")
+	}
+	for i, item := range items {
+		v, err := decimalOf(item)
+		if err != nil {
+			return err
+		}
+		if i > 0 && a.edges[i-1].Cmp(v) >= 0 {
+			return item.fault("list the edges in ascending order", "edge %s does not follow %s", trimmed(v), trimmed(a.edges[i-1]))
+		}
+		a.edges = append(a.edges, v)
+		a.Edges = append(a.Edges, nearest(v))
+	}
+	return nil
+}
+
+func decimalOf(n node) (*big.Rat, error) {
+	text, err := n.text(maxName)
+	if err != nil {
+		return nil, err
+	}
+	v, ok := parseDecimal(text)
+	if !ok {
+		return nil, n.fault("", "%q is not a decimal number", text)
+	}
+	return v, nil
+}
+
+func (a *draftAxis) readGuard(f map[string]node) (err error) {
+	a.guard = new(big.Rat)
+	n, ok := f["guard"]
+	if !ok {
+		if at, ok := f["guard_reason"]; ok {
+			return at.fault("", "guard_reason stands without a guard")
+		}
+		return nil
+	}
+	if a.guard, err = decimalOf(n); err != nil {
+		return err
+	}
+	if a.guard.Sign() < 0 {
+		return n.fault("", "a guard band cannot be negative")
+	}
+	twice := new(big.Rat).Add(a.guard, a.guard)
+	for i := 1; i < len(a.edges); i++ {
+		if width := new(big.Rat).Sub(a.edges[i], a.edges[i-1]); twice.Cmp(width) >= 0 {
+			return n.fault("", "a guard of %s on each side leaves nothing of the cell from %s to %s",
+				trimmed(a.guard), trimmed(a.edges[i-1]), trimmed(a.edges[i]))
+		}
+	}
+	a.Guard = nearest(a.guard)
+	return nil
+}
+
+func (a *draftAxis) readNames(f map[string]node) error {
+	n, ok := f["names"]
+	if !ok {
+		for i := 1; i < len(a.edges); i++ {
+			a.Names = append(a.Names, fmt.Sprintf("%s%d", a.Name, i))
+		}
+		return nil
+	}
+	items, err := n.items(maxEdges)
+	if err != nil {
+		return err
+	}
+	if len(items) != len(a.edges)-1 {
+		return n.fault("give one name per cell, one fewer than edges", "%d names for %d cells", len(items), len(a.edges)-1)
+	}
+	seen := map[string]bool{}
+	for _, item := range items {
+		name, err := item.text(maxName)
+		if err != nil {
+			return err
+		}
+		if !nameRule.MatchString(name) {
+			return item.fault("use letters, digits, -, _ and .", "%q cannot name a cell", name)
+		}
+		if seen[name] {
+			return item.fault("", "name %q stands twice", name)
+		}
+		seen[name] = true
+		a.Names = append(a.Names, name)
+	}
+	return nil
+}
+
+func (d *draft) readBins(n node) error {
+	f, err := n.fields("name", "sellable")
+	if err != nil {
+		return err
+	}
+	if n, ok := f["name"]; ok {
+		d.patternN = n
+		if d.pattern, err = n.text(maxText); err != nil {
+			return err
+		}
+	}
+	s, ok := f["sellable"]
+	if !ok {
+		d.all = true
+		return nil
+	}
+	if word, err := s.text(maxName); err == nil {
+		if d.all = word == "all"; !d.all {
+			return s.fault(`write "all" or a list of patterns like "W2*"`, "%q does not say which bins are sellable", word)
+		}
+		return nil
+	}
+	items, err := s.items(maxRules)
+	if err != nil {
+		return err
+	}
+	for _, item := range items {
+		text, err := item.text(maxText)
+		if err != nil {
+			return err
+		}
+		d.sellable = append(d.sellable, draftPattern{text, item})
+	}
+	return nil
+}
+
+func nearest(v *big.Rat) float64 {
+	f, _ := v.Float64()
+	return f
+}
+
+// trimmed writes a decimal without trailing zeros.
+func trimmed(v *big.Rat) string {
+	s := v.FloatString(30)
+	return strings.TrimSuffix(strings.TrimRight(s, "0"), ".")
+}
+
+// tooLarge is the fault of a specification with more codes than 16 bits hold.
+func tooLarge(n node, problem string) error {
+	f := n.fault("use fewer cells", "%s", problem)
+	f.Kind = analytics.ErrTooLarge
+	return f
+}
