@@ -115,6 +115,7 @@ func templateFuncs() template.FuncMap {
 		"count":  func(n int) string { return Count(n) },
 		"plate":  func(word string) Plate { return Plate{word} },
 		"plural": Plural,
+		"field":  func(name, label string, options []Option) FilterField { return FilterField{name, label, options} },
 	}
 }
 

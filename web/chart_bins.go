@@ -62,7 +62,7 @@ func BinChart(b Binned) *Chart {
 		names = append(names, name)
 		label := Count(cell.Dies) + "  " + Percent(cell.Dies, b.Denominator)
 		data = append(data, opts.BarData{Name: name + ": " + Plural(cell.Dies, "die", "dies") + ", " + Percent(cell.Dies, b.Denominator), Value: cell.Dies,
-			ItemStyle: &opts.ItemStyle{Color: cell.Look.token()},
+			ItemStyle: &opts.ItemStyle{Color: cell.Look.Token()},
 			Label:     &opts.Label{Show: opts.Bool(true), Position: "right", Color: tokenInk, Formatter: label}})
 	}
 	bar := charts.NewBar()
@@ -76,8 +76,8 @@ func BinChart(b Binned) *Chart {
 	return c
 }
 
-// token names the look for the chart script.
-func (l BinLook) token() string {
+// Token names the look for the chart script.
+func (l BinLook) Token() string {
 	switch {
 	case l.Missing:
 		return "@missing"

@@ -33,6 +33,7 @@ type LoadPage struct {
 	Reason  string
 	Place   string
 	Notices []string
+	Reads   []Fact // what it gave, with links
 }
 
 // LoadsFound is what the first sentence of the loads list rests on.

@@ -27,6 +27,7 @@ type BinPage struct {
 	Versions []Fact // links to the versions, newest first
 	Bins     []SpecCell
 	Rejects  []SpecCell
+	Axes     []SpecAxis
 	Needs    []Fact // quantities the spec needs, with units
 	Document string
 	Problem  string // why the document cannot be read now; "" = it can
@@ -36,4 +37,9 @@ type BinPage struct {
 // SpecCell is a bin or reject reason in words.
 type SpecCell struct {
 	Name, Class string
+}
+
+// SpecAxis is one axis of a specification with its edges in words.
+type SpecAxis struct {
+	Label, Unit, Edges string
 }

@@ -18,6 +18,8 @@ type WaferPage struct {
 	MapTitle     string   // what the map shows, with its unit
 	MapPNG       string   // URL of the server's picture, for reading without script and for print
 	MapAlt       string
+	MarkWords    string // "flat at the bottom"
+	EdgeWords    string // "edge exclusion of 3 mm"; "" = none
 	Histogram    *Chart
 	Radial       *Chart
 	BinYield     *Chart

@@ -1,5 +1,7 @@
 package web
 
+import "net/url"
+
 // WafersPage lists wafers, newest measurement first.
 type WafersPage struct {
 	Base
@@ -99,3 +101,6 @@ func (s *Sentence) say(text string) { s.Parts = append(s.Parts, Part{Text: text}
 func (s *Sentence) stress(text, href string) {
 	s.Parts = append(s.Parts, Part{Text: text, Strong: true, Href: href})
 }
+
+// waferHref is the address of a wafer's page.
+func waferHref(wafer string) string { return "/wafers/" + url.PathEscape(wafer) }
