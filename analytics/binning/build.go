@@ -210,9 +210,8 @@ func (d *draft) compile(codes map[string]uint32) error {
 	}
 	for a := range d.axes {
 		p := d.plan(d.axes[a].Quantity)
-		first := 1 + len(d.rules) + 3*a
-		for region := range p.verdicts {
-			p.verdicts[region] = join(p.verdicts[region], d.axes[a].verdict(p, region, first, stride[a], codes))
+		for region, v := range d.axes[a].verdicts(p, 1+len(d.rules)+3*a, stride[a], codes) {
+			p.verdicts[region] = join(p.verdicts[region], v)
 		}
 	}
 	for r, rule := range d.rules {
@@ -270,36 +269,46 @@ func (a *draftAxis) cell(i int) (low, high cut) {
 	return low, high
 }
 
-// verdict of one region of the axis's quantity. Its rejects rank from first on.
-func (a *draftAxis) verdict(p *plan, region, first int, stride uint32, codes map[string]uint32) uint32 {
-	if !p.beyond(region, cut{a.edges[0], false}) {
-		return verdict(first, codes[a.below])
+// verdicts gives what the axis says of every region of its quantity. Its rejects
+// rank from first on.
+func (a *draftAxis) verdicts(p *plan, first int, stride uint32, codes map[string]uint32) []uint32 {
+	out := make([]uint32, len(p.verdicts))
+	fill := func(from, to int, v uint32) {
+		for region := from; region < to; region++ {
+			out[region] = v
+		}
 	}
-	if p.beyond(region, cut{a.edges[len(a.edges)-1], true}) {
-		return verdict(first+1, codes[a.above])
-	}
+	bottom, top := p.behind(cut{a.edges[0], false}), p.behind(cut{a.edges[len(a.edges)-1], true})
+	fill(0, bottom, verdict(first, codes[a.below]))
+	fill(bottom, top, verdict(first+2, codes[a.inner])) // where no cell overwrites it
+	fill(top, len(out), verdict(first+1, codes[a.above]))
 	for i := range a.Names {
-		if low, high := a.cell(i); p.beyond(region, low) && !p.beyond(region, high) {
-			return uint32(i) * stride
-		}
+		low, high := a.cell(i)
+		fill(p.behind(low), p.behind(high), uint32(i)*stride)
 	}
-	return verdict(first+2, codes[a.inner])
+	return out
 }
 
-// beyond reports whether the values of a region lie beyond one of the plan's cuts.
-func (p *plan) beyond(region int, c cut) bool {
+// behind is the first region whose values lie beyond one of the plan's cuts.
+func (p *plan) behind(c cut) int {
 	i, _ := slices.BinarySearchFunc(p.cuts, c, cut.compare)
-	return region > i
+	return i + 1
 }
 
-// holds reports whether every atom about the plan's quantity holds in the region.
-func (p *plan) holds(t term, region int) bool {
+// span gives the regions from..to−1 in which every atom about the plan's quantity
+// holds: all of them when there is none.
+func (p *plan) span(t term) (from, to int) {
+	to = len(p.verdicts)
 	for _, a := range t {
-		if a.quantity == p.quantity && p.beyond(region, a.cut) != a.beyond {
-			return false
+		switch {
+		case a.quantity != p.quantity:
+		case a.beyond:
+			from = max(from, p.behind(a.cut))
+		default:
+			to = min(to, p.behind(a.cut))
 		}
 	}
-	return true
+	return from, to
 }
 
 // compileTerm folds a conjunction on one quantity into that quantity's verdicts,
@@ -309,10 +318,9 @@ func (d *draft) compileTerm(r draftRule, t term, v uint32) error {
 	single := !slices.ContainsFunc(t, func(a atom) bool { return a.quantity != t[0].quantity })
 	if single {
 		p := d.plan(t[0].quantity)
-		for region := range p.verdicts {
-			if p.holds(t, region) {
-				p.verdicts[region] = max(p.verdicts[region], v)
-			}
+		from, to := p.span(t)
+		for region := from; region < to; region++ {
+			p.verdicts[region] = max(p.verdicts[region], v)
 		}
 		return nil
 	}
@@ -326,10 +334,9 @@ func (d *draft) compileTerm(r draftRule, t term, v uint32) error {
 		if p.masks == nil {
 			p.masks = make([]uint64, len(p.verdicts))
 		}
-		for region := range p.masks {
-			if p.holds(t, region) {
-				p.masks[region] |= 1 << bit
-			}
+		from, to := p.span(t)
+		for region := from; region < to; region++ {
+			p.masks[region] |= 1 << bit
 		}
 	}
 	return nil

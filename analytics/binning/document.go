@@ -27,7 +27,11 @@ type node struct {
 func (n node) fault(remedy, problem string, args ...any) *analytics.Fault {
 	f := &analytics.Fault{Offset: -1, Key: n.path, Problem: fmt.Sprintf(problem, args...), Remedy: remedy}
 	if n.Node != nil {
-		f.Line, f.Column = position(n.GetToken())
+		at := n.Node
+		if m, ok := at.(*ast.MappingNode); ok && len(m.Values) > 0 {
+			at = m.Values[0].Key // a mapping begins at its first key
+		}
+		f.Line, f.Column = position(at.GetToken())
 	}
 	return f
 }
@@ -66,7 +70,10 @@ func readDocument(document []byte) (root node, err error) {
 			bodies = append(bodies, d.Body)
 		}
 	}
-	if len(bodies) != 1 {
+	if len(bodies) == 0 {
+		return node{}, &analytics.Fault{Line: 1, Offset: -1, Problem: "the document is empty"}
+	}
+	if len(bodies) > 1 {
 		return node{}, &analytics.Fault{Line: 1, Offset: -1, Problem: fmt.Sprintf("%d documents where one is expected", len(bodies)),
 			Remedy: "write one specification per document"}
 	}

@@ -14,13 +14,14 @@ import (
 
 // Limits of a specification.
 const (
-	maxRules = 1000
-	maxAxes  = 16
-	maxEdges = 1001
-	maxCodes = 65535 // bins, reject reasons and untested together
-	maxName  = 63
-	maxText  = 200
-	maxWhen  = 4000
+	maxRules        = 1000
+	maxAxes         = 16
+	maxEdges        = 1001
+	maxCodes        = 65535 // bins, reject reasons and untested together
+	maxName         = 63
+	maxText         = 200
+	maxWhen         = 4000
+	maxAlternatives = 4096 // terms of all conditions together
 )
 
 var nameRule = regexp.MustCompile(`^[A-Za-z0-9][A-Za-z0-9_.-]{0,62}$`)
@@ -43,6 +44,7 @@ func Parse(document []byte) (*Spec, error) {
 type draft struct {
 	spec     *Spec
 	rules    []draftRule
+	terms    int // of all rules
 	axes     []draftAxis
 	root     node
 	pattern  string
@@ -152,6 +154,9 @@ func (d *draft) readRejects(n node) error {
 			return conditionFault(f["when"], text, wrong)
 		}
 		r.terms = terms
+		if d.terms += len(terms); d.terms > maxAlternatives {
+			return tooLarge(item, fmt.Sprintf("the rules have more than %d alternatives", maxAlternatives))
+		}
 		d.rules = append(d.rules, r)
 		d.spec.rules = append(d.spec.rules, Rule{Reason: r.reason, When: text})
 	}
@@ -260,7 +265,7 @@ func (a *draftAxis) readEdges(n node) error {
 func decimalOf(n node) (*big.Rat, error) {
 	text, err := n.text(maxName)
 	if err != nil {
-		return nil, err
+		return nil, n.fault("", "expected a decimal number")
 	}
 	v, ok := parseDecimal(text)
 	if !ok {
@@ -377,7 +382,7 @@ func trimmed(v *big.Rat) string {
 
 // tooLarge is the fault of a specification with more codes than 16 bits hold.
 func tooLarge(n node, problem string) error {
-	f := n.fault("use fewer cells", "%s", problem)
+	f := n.fault("split the specification, or use fewer cells or rules", "%s", problem)
 	f.Kind = analytics.ErrTooLarge
 	return f
 }
