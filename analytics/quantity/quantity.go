@@ -8,6 +8,7 @@ package quantity
 
 import (
 	"fmt"
+	"math"
 	"regexp"
 	"sort"
 
@@ -96,8 +97,8 @@ func Declare(name, label, unit string, resolution float64) (Quantity, error) {
 	if _, ok := Lookup(name); ok {
 		return Quantity{}, fmt.Errorf("quantity %q is built in and cannot be declared again: %w", name, analytics.ErrConflict)
 	}
-	if !(resolution > 0) {
-		return Quantity{}, fmt.Errorf("quantity %q: resolution %g is not above zero: %w", name, resolution, analytics.ErrInvalid)
+	if !(resolution > 0 && resolution <= math.MaxFloat64) {
+		return Quantity{}, fmt.Errorf("quantity %q: resolution %g is not a number above zero: %w", name, resolution, analytics.ErrInvalid)
 	}
 	if label == "" {
 		label = name

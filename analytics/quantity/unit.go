@@ -47,8 +47,8 @@ type Conversion struct {
 // die). An unknown unit, or two units of different dimension, is
 // analytics.ErrInvalid with the units that would do.
 func Convert(from, to string) (Conversion, error) {
-	a, ok := units[strings.ToLower(from)]
-	b, okTo := units[strings.ToLower(to)]
+	a, ok := units[folded(from)]
+	b, okTo := units[folded(to)]
 	if strings.EqualFold(from, to) {
 		return Conversion{0, 1}, nil
 	}
@@ -62,6 +62,12 @@ func Convert(from, to string) (Conversion, error) {
 		return Conversion{}, fmt.Errorf("unit %q is a %s, but %q is a %s: use one of %s: %w", from, a.dimension, to, b.dimension, unitsOf(b.dimension), analytics.ErrInvalid)
 	}
 	return Conversion{Power: a.power - b.power, Multiple: a.multiple / b.multiple}, nil
+}
+
+// folded is a unit's key in the table: lower case, with the Greek letter mu
+// (U+03BC) written as the micro sign (U+00B5) that looks like it.
+func folded(name string) string {
+	return strings.ReplaceAll(strings.ToLower(name), "\u03bc", "\u00b5")
 }
 
 func unitsOf(dimension string) string {
