@@ -30,12 +30,20 @@ func (in *WaferInput) fillMap(p *WaferPage, shown *Plotted) {
 		p.MapTitle = "Where do its bins lie?"
 		png = url.Values{"size": {"720"}, "specification": {in.Spec.Name}, "version": {strconv.Itoa(in.Spec.Version)}}
 	case shown.Quantity.Scale == quantity.Deviation && !math.IsNaN(shown.Target):
-		p.MapTitle = "Where is it off target in " + lowerFirst(axisTitle(shown.Quantity)) + "?"
+		p.MapTitle = "Where is it off target in " + inWords(shown.Quantity) + "?"
 	default:
-		p.MapTitle = "How does " + lowerFirst(axisTitle(shown.Quantity)) + " lie on the wafer?"
+		p.MapTitle = "How does " + inWords(shown.Quantity) + " lie on the wafer?"
 	}
 	p.MapPNG = m.api() + "/map.png?" + png.Encode()
 	p.MapAlt = "Map of wafer " + in.Wafer + ", " + Count(m.Dies) + " dies: " + p.MapTitle
+}
+
+// inWords is a quantity inside a sentence, with its unit.
+func inWords(q quantity.Quantity) string {
+	if q.Unit == "" {
+		return lowerFirst(q.Label)
+	}
+	return lowerFirst(q.Label) + " (" + q.Unit + ")"
 }
 
 func mapLayout(l *wafermap.Layout) MapLayout {

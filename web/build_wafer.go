@@ -110,7 +110,7 @@ func NewWaferPage(in WaferInput) WaferPage {
 		p.Quantities = append(p.Quantities, Option{q.Quantity.Name, axisTitle(q.Quantity), shown != nil && q.Quantity.Name == shown.Quantity.Name})
 		p.Stats = append(p.Stats, statLine(q))
 	}
-	p.StatsOver = in.countedWords()
+	p.StatsOver = "Figures are " + in.countedWords() + "."
 	p.Finding = in.sentence(main)
 	if main != nil && !math.IsNaN(main.Target) {
 		p.State = uniformity.ColourState(main.Summary, main.Window)
@@ -173,7 +173,7 @@ func (in *WaferInput) href(view, quantity string) string {
 func (in *WaferInput) sentence(main *Plotted) Sentence {
 	m := in.Measurement
 	f := WaferFound{Wafer: in.Wafer, Measured: true, Target: math.NaN(), BinsHref: in.href("bins", ""),
-		Basis: fmt.Sprintf("%s measurement of %s, %s; %s", m.Kind, Plural(m.Dies, "die", "dies"), Moment(m.MeasuredAt, in.Zone), in.countedWords())}
+		Basis: fmt.Sprintf("%s measurement of %s, %s; %s", m.Kind, Plural(m.Dies, "die", "dies"), Moment(m.MeasuredAt, in.Zone), "figures "+in.countedWords())}
 	if main != nil {
 		f.Quantity, f.Summary, f.Target = main.Quantity, &main.Summary, main.Target
 		f.QuantityHref = in.href("quantity", main.Quantity.Name)
@@ -252,11 +252,11 @@ func (in *WaferInput) measurementOptions() []Option {
 
 func (in *WaferInput) countedWords() string {
 	if l := in.Measurement.Layout; l == nil || l.Assumed {
-		return "figures are over all measured dies, since no layout is known"
+		return "over all measured dies, since no layout is known"
 	} else if l.EdgeExclusionMM > 0 {
-		return "figures are over the measured dies inside the edge exclusion of " + With(l.EdgeExclusionMM, 1, "mm")
+		return "over the measured dies inside the edge exclusion of " + With(l.EdgeExclusionMM, 1, "mm")
 	}
-	return "figures are over the measured dies on the layout"
+	return "over the measured dies on the layout"
 }
 
 func (in *WaferInput) notices() []string {

@@ -34,10 +34,10 @@ func BinChart(b Binned) *Chart {
 	c := &Chart{ID: "bins", Question: "Where are the dies lost?", CSVURL: b.CSVURL,
 		Table: Table{Head: []string{"bin or reason", "class", "dies", "share"}}}
 	var shown []MapCell
-	for _, cell := range b.Cells {
-		c.Table.Rows = append(c.Table.Rows, []string{cell.Name, cell.Class, Count(cell.Dies), Percent(cell.Dies, b.Denominator)})
-		if cell.Dies > 0 {
-			shown = append(shown, cell)
+	for _, mc := range b.Cells {
+		c.Table.add(textCell(mc.Name), textCell(mc.Class), countCell(mc.Dies), shareCell(mc.Dies, b.Denominator))
+		if mc.Dies > 0 {
+			shown = append(shown, mc)
 		}
 	}
 	if len(shown) == 0 {
@@ -62,7 +62,7 @@ func BinChart(b Binned) *Chart {
 		names = append(names, name)
 		label := Count(cell.Dies) + "  " + Percent(cell.Dies, b.Denominator)
 		data = append(data, opts.BarData{Name: name + ": " + Plural(cell.Dies, "die", "dies") + ", " + Percent(cell.Dies, b.Denominator), Value: cell.Dies,
-			ItemStyle: &opts.ItemStyle{Color: cell.Look.Token()},
+			ItemStyle: &opts.ItemStyle{Color: "@" + cell.Look.Token()},
 			Label:     &opts.Label{Show: opts.Bool(true), Position: "right", Color: tokenInk, Formatter: label}})
 	}
 	bar := charts.NewBar()
@@ -76,15 +76,15 @@ func BinChart(b Binned) *Chart {
 	return c
 }
 
-// Token names the look for the chart script.
+// Token names the look for the scripts: "bin:3:rise", "reject:0:" or "missing".
 func (l BinLook) Token() string {
 	switch {
 	case l.Missing:
-		return "@missing"
+		return "missing"
 	case l.Reject:
-		return fmt.Sprintf("@reject:%d:%s", l.Fill, l.Pattern)
+		return fmt.Sprintf("reject:%d:%s", l.Fill, l.Pattern)
 	default:
-		return fmt.Sprintf("@bin:%d:%s", l.Fill, l.Pattern)
+		return fmt.Sprintf("bin:%d:%s", l.Fill, l.Pattern)
 	}
 }
 
@@ -118,7 +118,8 @@ func YieldsChart(spec string, yields []WaferYield, zone *time.Location, csvURL s
 		Table: Table{Head: []string{"wafer", "lot", "measured at", "sellable dies", "of dies", "yield"}}}
 	var data []opts.ScatterData
 	for _, y := range yields {
-		c.Table.Rows = append(c.Table.Rows, []string{y.Wafer, y.Lot, Moment(y.MeasuredAt, zone), Count(y.Good), Count(y.Denominator), Percent(y.Good, y.Denominator)})
+		c.Table.add(textCell(y.Wafer), textCell(y.Lot), cell{Moment(y.MeasuredAt, zone), y.MeasuredAt.In(zone).Format(time.RFC3339)},
+			countCell(y.Good), countCell(y.Denominator), shareCell(y.Good, y.Denominator))
 		if y.Denominator == 0 {
 			continue
 		}

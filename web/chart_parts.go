@@ -71,9 +71,9 @@ func targetMarks(axis string, target, window float64, decimals int, unit string)
 	if math.IsNaN(target) {
 		return nil, nil
 	}
-	end, place := "end", "insideTop"
+	end, place := "end", "insideTopLeft"
 	if axis == "yAxis" {
-		end, place = "insideEndTop", "insideTopRight"
+		end, place = "insideStartTop", "insideTopLeft"
 	}
 	line = &opts.MarkLines{
 		Data: []any{map[string]any{axis: target, "name": "target"}},

@@ -42,7 +42,7 @@ func HistogramChart(p Plotted) *Chart {
 		low, high := h.Low+float64(i)*h.Width, h.Low+float64(i+1)*h.Width
 		words := fmt.Sprintf("%s to %s: %s", Number(low, decimals), With(high, decimals, q.Unit), Plural(n, "die", "dies"))
 		data = append(data, opts.BarData{Name: words, Value: []float64{round(low+h.Width/2, 9), float64(n)}})
-		c.Table.Rows = append(c.Table.Rows, []string{Number(low, decimals), Number(high, decimals), Count(n)})
+		c.Table.add(numberCell(low, decimals), numberCell(high, decimals), countCell(n))
 	}
 	c.Caption = fmt.Sprintf("%s dies with a value, in steps of %s.", Count(p.Summary.N), With(h.Width, decimals, q.Unit))
 	if h.Below+h.Above > 0 {
@@ -91,7 +91,7 @@ func RadialChart(p Plotted) *Chart {
 	var mean, floor, band []opts.LineData
 	total := 0
 	for _, r := range p.Summary.Radial {
-		c.Table.Rows = append(c.Table.Rows, []string{Number(r.InnerMM, 1), Number(r.OuterMM, 1), Number(r.Mean, decimals+1), Number(r.SD, decimals+1), Count(r.N)})
+		c.Table.add(numberCell(r.InnerMM, 1), numberCell(r.OuterMM, 1), numberCell(r.Mean, decimals+1), numberCell(r.SD, decimals+1), countCell(r.N))
 		if r.N == 0 || math.IsNaN(r.Mean) {
 			continue
 		}

@@ -33,7 +33,6 @@ type LoadPage struct {
 	Reason  string
 	Place   string
 	Notices []string
-	Reads   []Fact // what it gave, with links
 }
 
 // LoadsFound is what the first sentence of the loads list rests on.
@@ -67,12 +66,12 @@ func LoadsSentence(f LoadsFound) Sentence {
 		s.say(" are below.")
 		return s
 	case f.Refused == 0:
-		s.stress(atLeast+Plural(f.Stored, "file was", "files were"), f.StoredURL)
-		s.say(" stored in the last hour, and none refused.")
+		s.stress(atLeast+Plural(f.Stored, "file", "files"), f.StoredURL)
+		s.say(was(f.Stored) + "stored in the last hour, and none refused.")
 		return s
 	}
-	s.stress(atLeast+Plural(f.Refused, "file was", "files were"), f.RefusedURL)
-	s.say(" refused in the last hour")
+	s.stress(atLeast+Plural(f.Refused, "file", "files"), f.RefusedURL)
+	s.say(was(f.Refused) + "refused in the last hour")
 	switch {
 	case f.Sharing > 1 && f.Sharing == f.Refused:
 		s.say("; all share one cause: " + f.SharedCause)
@@ -87,4 +86,11 @@ func LoadsSentence(f LoadsFound) Sentence {
 	}
 	s.say(".")
 	return s
+}
+
+func was(n int) string {
+	if n == 1 {
+		return " was "
+	}
+	return " were "
 }

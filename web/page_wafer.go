@@ -116,10 +116,11 @@ type Chart struct {
 	Tall     int // rows of a horizontal bar chart, for its height; 0 = the usual height
 }
 
-// Table is a small table of text; the first column heads its rows.
+// Table is a small table; the first column heads its rows.
 type Table struct {
 	Head []string
-	Rows [][]string
+	Rows [][]string // as a person reads them
+	Raw  [][]string // the same as a program reads them: no separators, no units
 }
 
 // HeightClass is the style class for the height of a chart with Tall rows.

@@ -33,7 +33,7 @@ type Palettes struct {
 // Hues of the deviation scale in CIELAB LCh, degrees.
 const (
 	tealHue  = 208 // short of target
-	ochreHue = 73  // long of target
+	ochreHue = 79  // long of target
 )
 
 // deviationScale runs from teal (short) through the neutral ground at the

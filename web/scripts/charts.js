@@ -10,12 +10,13 @@ import { number } from './number.js';
 
 echarts.use([BarChart, LineChart, ScatterChart, GridComponent, MarkAreaComponent, MarkLineComponent, TooltipComponent, CanvasRenderer]);
 
+const FONT = 'system-ui, "Segoe UI", Roboto, "Noto Sans", "DejaVu Sans", sans-serif';
 const live = new Map(); // element → chart
 
 function colours() {
   const style = getComputedStyle(document.documentElement);
   const get = (name) => style.getPropertyValue(`--${name}`).trim();
-  return { ink: get('ink'), faint: get('faint'), hair: get('hair'), accent: get('accent'), band: get('band'), paper: get('paper') };
+  return { ink: get('ink'), faint: get('faint'), hair: get('hair'), accent: get('accent'), band: get('band'), paper: get('paper'), line: get('line') };
 }
 
 // fill replaces tokens: "@accent" by a colour, "@bin:3:rise" by the map's fill.
@@ -35,8 +36,8 @@ function fill(node, ink, palette) {
 }
 
 function dress(options, ink) {
-  const text = { color: ink.ink, fontFamily: 'inherit', fontSize: 15 };
-  options.textStyle = { fontFamily: 'system-ui, sans-serif', fontSize: 15, color: ink.ink };
+  const text = { color: ink.ink, fontFamily: FONT, fontSize: 15 };
+  options.textStyle = { fontFamily: FONT, fontSize: 15, color: ink.ink };
   Object.assign(options.tooltip, {
     renderMode: 'richText', confine: true, backgroundColor: ink.paper, borderColor: ink.ink, borderWidth: 1,
     textStyle: { color: ink.ink, fontSize: 15 }, shadowBlur: 0, shadowColor: 'transparent',
@@ -45,6 +46,10 @@ function dress(options, ink) {
     for (const axis of [].concat(options[which] ?? [])) {
       axis.axisLabel = { ...axis.axisLabel, ...text, hideOverlap: true };
       if (axis.type === 'value') axis.axisLabel.formatter = (v) => number(v, decimalsOf(v));
+      if (axis.type === 'time') axis.axisLabel.formatter = '{MM}-{dd} {HH}:{mm}';
+      // An end that was set to fit the dies is no round number worth a label.
+      if (axis.min !== undefined && !Number.isInteger(axis.min)) axis.axisLabel.showMinLabel = false;
+      if (axis.max !== undefined && !Number.isInteger(axis.max)) axis.axisLabel.showMaxLabel = false;
       axis.nameTextStyle = { ...text, align: which === 'yAxis' ? 'left' : 'center', padding: which === 'yAxis' ? [0, 0, 0, -56] : 0 };
       axis.axisLine = { show: true, lineStyle: { color: ink.faint } };
       axis.axisTick = { show: axis.type !== 'category', lineStyle: { color: ink.faint } };
@@ -52,6 +57,7 @@ function dress(options, ink) {
     }
   }
   for (const series of options.series ?? []) {
+    if (series.type === 'bar') series.itemStyle = { borderColor: ink.line, borderWidth: options.yAxis?.[0]?.type === 'category' ? 1 : 0, ...series.itemStyle };
     if (series.markLine) Object.assign(series.markLine, { silent: true, animation: false });
     if (series.markArea) Object.assign(series.markArea, { silent: true });
     for (const mark of [series.markLine, series.markArea]) if (mark?.label) Object.assign(mark.label, { fontSize: 15 });

@@ -19,15 +19,20 @@ export function drawLegend(map, palette, scale) {
   const ctx = canvas.getContext('2d');
   ctx.scale(ratio, ratio);
   const wide = width / ratio;
-  bars(ctx, map.shaded.counts, wide, palette);
+  bars(ctx, map.shaded.counts, cellsFor(map.quantity), wide, palette);
   shades(ctx, scale, wide, palette);
   marks(ctx, map.quantity, wide, palette);
   if (note) note.textContent = words(map.shaded, map.quantity, map);
 }
 
-// bars is the histogram, 32 cells over the scale.
-function bars(ctx, counts, wide, palette) {
-  const cells = 64;
+// cellsFor avoids a comb where values are coarse: four of their steps a cell.
+function cellsFor(q) {
+  const steps = (q.high - q.low) * 10 ** q.decimals;
+  return Math.min(Math.max(Math.floor(steps / 4), 8), 64);
+}
+
+// bars is the histogram along the scale.
+function bars(ctx, counts, cells, wide, palette) {
   const sums = new Array(cells).fill(0);
   counts.forEach((n, i) => {
     sums[Math.floor((i * cells) / counts.length)] += n;
