@@ -167,7 +167,7 @@ func (in *WaferInput) href(view, quantity string) string {
 	if in.Spec != nil {
 		q.Set("specification", in.Spec.value())
 	}
-	return "/wafers/" + url.PathEscape(in.Wafer) + "?" + q.Encode()
+	return waferHref(in.Wafer) + "?" + q.Encode()
 }
 
 func (in *WaferInput) sentence(main *Plotted) Sentence {
@@ -208,7 +208,7 @@ func (in *WaferInput) loss() Loss {
 func (in *WaferInput) charts(shown *Plotted) (histogram, radial *Chart) {
 	h, r := *shown, *shown
 	q := url.Values{"measurement": {strconv.FormatInt(in.Measurement.ID, 10)}, "quantity": {shown.Quantity.Name}}
-	root := "/wafers/" + url.PathEscape(in.Wafer) + "/charts/"
+	root := waferHref(in.Wafer) + "/charts/"
 	h.CSVURL, r.CSVURL = root+"histogram.csv?"+q.Encode(), root+"radial.csv?"+q.Encode()
 	return HistogramChart(h), RadialChart(r)
 }
@@ -222,8 +222,7 @@ func (in *WaferInput) fillBins(p *WaferPage) {
 	p.YieldBig = Percent(s.Good, s.Denominator)
 	p.YieldOver = fmt.Sprintf("%s of %s %s", Count(s.Good), Count(s.Denominator), over(s.OverLayout))
 	q := s.under() + "&measurement=" + strconv.FormatInt(in.Measurement.ID, 10)
-	p.BinYield = BinChart(Binned{Spec: s.title(), Cells: mapCells(s), Denominator: s.Denominator, OverLayout: s.OverLayout,
-		CSVURL: "/wafers/" + url.PathEscape(in.Wafer) + "/charts/bins.csv?" + q})
+	p.BinYield = SpecChart(s, waferHref(in.Wafer)+"/charts/bins.csv?"+q)
 }
 
 func mapCells(s *SpecInput) []MapCell {
@@ -344,4 +343,9 @@ func statLine(p Plotted) StatLine {
 		line.Within = "±1" + u + PercentOf(s.Within1) + ", ±2" + u + PercentOf(s.Within2) + ", ±5" + u + PercentOf(s.Within5)
 	}
 	return line
+}
+
+// SpecChart is the chart of a measurement binned under a specification.
+func SpecChart(s *SpecInput, csvURL string) *Chart {
+	return BinChart(Binned{Spec: s.title(), Cells: mapCells(s), Denominator: s.Denominator, OverLayout: s.OverLayout, CSVURL: csvURL})
 }

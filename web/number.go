@@ -64,6 +64,15 @@ func With(v float64, decimals int, unit string) string {
 	return s + thinSpace + unit
 }
 
+// SignedWith is With with a plus before positive values.
+func SignedWith(v float64, decimals int, unit string) string {
+	s := With(v, decimals, unit)
+	if strings.HasPrefix(Signed(v, decimals), "+") {
+		return "+" + s
+	}
+	return s
+}
+
 // Percent writes part of whole in whole per cent, as few digits as do not lie:
 // one decimal below 10 % and above 99 %, and never 0 % or 100 % unless it is
 // so. "–" when whole is 0.

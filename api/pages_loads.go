@@ -1,0 +1,132 @@
+package api
+
+import (
+	"fmt"
+	"strconv"
+	"time"
+
+	"github.com/labstack/echo/v4"
+
+	"epitally/analytics"
+	"epitally/db"
+	"epitally/web"
+)
+
+// loadsCounted is how many of the newest sources the first sentence looks at.
+const loadsCounted = 500
+
+var sourceStates = []string{db.SourceWaiting, db.SourceReading, db.SourceStored, db.SourceRefused}
+
+func (s *Server) pageLoads(c echo.Context) error {
+	ctx := c.Request().Context()
+	state, cursor := queryText(c, "state"), c.QueryParam("cursor")
+	rows, next, err := s.store.Sources(ctx, state, 50, cursor)
+	if err != nil {
+		return err
+	}
+	newest, _, err := s.store.Sources(ctx, "", loadsCounted, "")
+	if err != nil {
+		return err
+	}
+	page := web.LoadsPage{Base: s.base(c, web.Base{Title: "Loads", Section: "loads"}), Empty: len(newest) == 0}
+	found := s.lastHour(newest)
+	found.Basis = "Sources seen in the hour before " + page.MadeAt
+	page.Finding = web.LoadsSentence(found)
+	page.States = append(page.States, web.Fact{Name: "all", Href: hrefUnless(state == "", "/loads")})
+	for _, st := range sourceStates {
+		page.States = append(page.States, web.Fact{Name: st, Href: hrefUnless(state == st, listURL("/loads", "state", st))})
+	}
+	for i := range rows {
+		page.Rows = append(page.Rows, s.loadLine(&rows[i]))
+	}
+	if next != "" {
+		page.OlderURL = listURL("/loads", "state", state, "cursor", next)
+	}
+	if cursor != "" {
+		page.FirstURL = listURL("/loads", "state", state)
+	}
+	return s.render(c, "loads", page)
+}
+
+func hrefUnless(here bool, href string) string {
+	if here {
+		return ""
+	}
+	return href
+}
+
+// lastHour counts what the newest sources came to in the hour before now.
+func (s *Server) lastHour(newest []db.Source) web.LoadsFound {
+	f := web.LoadsFound{Ever: len(newest) > 0, RefusedURL: listURL("/loads", "state", db.SourceRefused), StoredURL: listURL("/loads", "state", db.SourceStored)}
+	since := s.now().Add(-time.Hour)
+	reasons := map[string]int{}
+	inHour := 0
+	for i := range newest {
+		src := &newest[i]
+		if src.SeenAt.Before(since) {
+			continue
+		}
+		inHour++
+		switch src.State {
+		case db.SourceStored:
+			f.Stored++
+		case db.SourceRefused:
+			f.Refused++
+			reasons[src.Reason]++
+			if n := reasons[src.Reason]; n > f.Sharing {
+				f.SharedCause, f.Sharing = src.Reason, n
+			}
+		}
+	}
+	f.More = inHour == loadsCounted
+	if f.Sharing == 1 && f.Refused > 1 {
+		f.SharedCause = ""
+	}
+	return f
+}
+
+func (s *Server) loadLine(src *db.Source) web.LoadLine {
+	return web.LoadLine{Name: src.Name, Href: "/loads/" + strconv.FormatInt(src.ID, 10), State: src.State, Format: src.Format,
+		SeenAt: web.Moment(src.SeenAt, s.zone), Bytes: web.Bytes(src.Bytes), Wafers: web.Count(src.Wafers), Dies: web.Count(src.Dies),
+		Reason: src.Reason, Place: placeWords(src), Notices: len(src.Notices)}
+}
+
+// placeWords says where in the source it went wrong; "" when that is not known.
+func placeWords(src *db.Source) string {
+	switch {
+	case src.Line > 0 && src.Column > 0:
+		return fmt.Sprintf("line %d, column %d", src.Line, src.Column)
+	case src.Line > 0:
+		return fmt.Sprintf("line %d", src.Line)
+	case src.Offset > 0:
+		return fmt.Sprintf("byte %d", src.Offset)
+	}
+	return ""
+}
+
+func (s *Server) pageLoad(c echo.Context) error {
+	id, err := strconv.ParseInt(c.Param("id"), 10, 64)
+	if err != nil {
+		return fmt.Errorf("there is no load %q: its number stands under Loads: %w", c.Param("id"), analytics.ErrNotFound)
+	}
+	src, err := s.store.Source(c.Request().Context(), id)
+	if err != nil {
+		return err
+	}
+	page := web.LoadPage{Name: src.Name, State: src.State, Reason: src.Reason, Place: placeWords(src), Notices: src.Notices}
+	page.Base = s.base(c, web.Base{Title: src.Name, Section: "loads", Finding: web.LoadSentence(src.Name, src.State, src.Wafers, src.Dies)})
+	add := func(name, value string) {
+		if value != "" {
+			page.Facts = append(page.Facts, web.Fact{Name: name, Value: value})
+		}
+	}
+	add("seen", web.Moment(src.SeenAt, s.zone))
+	if src.StoredAt != nil {
+		add("stored", web.Moment(*src.StoredAt, s.zone))
+	}
+	add("size", web.Bytes(src.Bytes))
+	add("format", src.Format)
+	add("reading profile", src.Profile)
+	add("SHA-256 of its bytes", src.SHA256)
+	return s.render(c, "load", page)
+}
