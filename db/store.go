@@ -3,15 +3,20 @@ package db
 import (
 	"context"
 	"errors"
+	"fmt"
 	"io"
+	"io/fs"
+	"strings"
+	"sync"
 	"time"
 
-	"epitally/analytics/quantity"
-	"epitally/analytics/uniformity"
-	"epitally/analytics/wafermap"
-)
+	"github.com/jackc/pgx/v5"
+	"github.com/jackc/pgx/v5/pgxpool"
 
-var errStub = errors.New("not built yet")
+	"epitally/analytics"
+	"epitally/analytics/wafermap"
+	"epitally/migrations"
+)
 
 // Config says which database and how many connections.
 type Config struct {
@@ -19,259 +24,136 @@ type Config struct {
 	MaxConns int    // 0 = 8
 }
 
-// Store is everything that speaks SQL.
-type Store struct{}
+// Store is everything that speaks SQL. Its methods may be called from any
+// number of goroutines.
+type Store struct {
+	pool *pgxpool.Pool
+
+	mu      sync.Mutex
+	months  map[string]bool           // months whose partitions are known to exist
+	grids   map[[32]byte]int64        // committed grids by hash
+	decoded map[string]*wafermap.Grid // a few grids in memory, by hex hash
+	counted map[wafermap.Layout]int   // dies inside the edge exclusion
+}
 
 // Open connects, refuses a schema that is older or newer than this binary's
 // (after Migrate it never is), and checks server version and LZ4.
-func Open(ctx context.Context, c Config) (*Store, error) { return nil, errStub }
+func Open(ctx context.Context, c Config) (s *Store, err error) {
+	defer wrap(&err, "open database")
+	config, err := pgxpool.ParseConfig(c.URL)
+	if err != nil {
+		return nil, fmt.Errorf("%w: %w", err, analytics.ErrInvalid)
+	}
+	config.MaxConns = 8
+	if c.MaxConns > 0 {
+		config.MaxConns = int32(c.MaxConns)
+	}
+	config.MaxConnIdleTime = 5 * time.Minute
+	config.ConnConfig.RuntimeParams["application_name"] = "epitally"
+	// A query that runs this long is a fault, not a wait; loads set their own.
+	config.ConnConfig.RuntimeParams["statement_timeout"] = "60s"
+	pool, err := pgxpool.NewWithConfig(ctx, config)
+	if err != nil {
+		return nil, err
+	}
+	s = &Store{pool: pool, months: map[string]bool{}, grids: map[[32]byte]int64{},
+		decoded: map[string]*wafermap.Grid{}, counted: map[wafermap.Layout]int{}}
+	if err := s.check(ctx); err != nil {
+		pool.Close()
+		return nil, err
+	}
+	return s, nil
+}
 
-func (s *Store) Close() {}
+// Close gives every connection back.
+func (s *Store) Close() { s.pool.Close() }
 
 // Ping answers analytics.ErrUnavailable when the database does not.
-func (s *Store) Ping(ctx context.Context) error { return errStub }
+func (s *Store) Ping(ctx context.Context) error {
+	if err := s.pool.Ping(ctx); err != nil {
+		if ctx.Err() != nil && !errors.Is(err, context.DeadlineExceeded) {
+			return err
+		}
+		return fmt.Errorf("the database does not answer: %w: %w", analytics.ErrUnavailable, err)
+	}
+	return nil
+}
 
-// Migrate brings the database to this binary's schema; safe when two servers
-// start together (session advisory lock).
-func Migrate(ctx context.Context, url string) error { return errStub }
+func (s *Store) check(ctx context.Context) error {
+	var version int
+	var lz4 bool
+	err := s.pool.QueryRow(ctx, `
+		SELECT current_setting('server_version_num')::int / 10000,
+		       EXISTS (SELECT FROM pg_settings WHERE name = 'default_toast_compression' AND 'lz4' = ANY (enumvals))`).Scan(&version, &lz4)
+	if err != nil {
+		return err
+	}
+	if version < 15 {
+		return fmt.Errorf("PostgreSQL %d is too old; 15 or newer is needed: %w", version, analytics.ErrInvalid)
+	}
+	if !lz4 {
+		return fmt.Errorf("this PostgreSQL was built without LZ4, which planes are compressed with; install the distribution's own build: %w", analytics.ErrInvalid)
+	}
+	var schema int64
+	err = s.pool.QueryRow(ctx, `SELECT coalesce(max(version_id), 0) FROM goose_db_version WHERE is_applied`).Scan(&schema)
+	if err != nil {
+		return fmt.Errorf("the database has no schema of Epitally yet; it is made at the first start: %w", err)
+	}
+	switch want := newestMigration(); {
+	case schema < want:
+		return fmt.Errorf("the schema is at %d, this binary needs %d: start the server once to bring it up: %w", schema, want, analytics.ErrConflict)
+	case schema > want:
+		return fmt.Errorf("the schema is at %d, newer than this binary (%d): use the newer binary: %w", schema, want, analytics.ErrConflict)
+	}
+	return nil
+}
+
+// newestMigration is the number of the last embedded migration.
+func newestMigration() int64 {
+	names, _ := fs.Glob(migrations.FS, "*.sql") // the pattern is well formed
+	return int64(len(names))                    // make lint holds the numbers to 1, 2, …
+}
 
 // EnsurePartitions makes the monthly partitions of measurement, plane, … that
 // cover [from, to].
-func (s *Store) EnsurePartitions(ctx context.Context, from, to time.Time) error { return errStub }
-
-// ---- loading
-
-// Load is one source being stored: one transaction, all or nothing.
-type Load struct{}
-
-// BeginLoad opens the transaction.
-func (s *Store) BeginLoad(ctx context.Context) (*Load, error) { return nil, errStub }
-
-// WaferContext is what binning and summaries need to know of a wafer before it
-// is stored: layout and targets by its product and recipe, and the latest
-// version of every spec of the product and the measurement kind. A wafer never
-// seen gives a Wafer with only its name.
-type WaferContext struct {
-	Wafer Wafer
-	Specs []Spec
+func (s *Store) EnsurePartitions(ctx context.Context, from, to time.Time) (err error) {
+	defer wrap(&err, "make partitions %s to %s", from.UTC().Format("2006-01"), to.UTC().Format("2006-01"))
+	from = from.UTC()
+	for month := time.Date(from.Year(), from.Month(), 1, 0, 0, 0, 0, time.UTC); !month.After(to); month = month.AddDate(0, 1, 0) {
+		if err := s.ensureMonth(ctx, month); err != nil {
+			return err
+		}
+	}
+	return nil
 }
 
-// WaferContext reads inside the load's transaction (cached per product).
-func (l *Load) WaferContext(ctx context.Context, wafer, kind string) (*WaferContext, error) {
-	return nil, errStub
+// ensureMonth works on a connection of its own, so that a partition stands
+// whatever becomes of the load that needed it.
+func (s *Store) ensureMonth(ctx context.Context, at time.Time) error {
+	month := at.UTC().Format("2006-01")
+	s.mu.Lock()
+	known := s.months[month]
+	s.mu.Unlock()
+	if known {
+		return nil
+	}
+	if year := at.UTC().Year(); year < 1980 || year > 2100 {
+		return fmt.Errorf("measured at %s: the year is not between 1980 and 2100; check the station's clock: %w", at.UTC().Format(time.RFC3339), analytics.ErrInvalid)
+	}
+	if _, err := s.pool.Exec(ctx, `SELECT ensure_month($1::date)`, month+"-01"); err != nil {
+		return err
+	}
+	s.mu.Lock()
+	s.months[month] = true
+	s.mu.Unlock()
+	return nil
 }
 
-// NewMeasurement is a measurement to store with everything derived from it.
-type NewMeasurement struct {
-	Wafer, Lot, Kind, Station string
-	MeasuredAt                time.Time
-	DriveCurrentMA            *float64
-	Facts                     map[string]string
-	Notices                   []string
-	SourceLayout              *wafermap.Layout // as the source stated it, or nil
-	Grid                      *wafermap.Grid
-	Planes                    []wafermap.Plane
-	Quantities                []quantity.Quantity
-	Remeasured                int
-	Derived                   Derived
+// inTx runs fn in a read-write transaction.
+func (s *Store) inTx(ctx context.Context, fn func(pgx.Tx) error) error {
+	return pgx.BeginFunc(ctx, s.pool, fn)
 }
 
-// Derived is what is computed once at load: a summary and a small map per
-// plane, a tally per spec version.
-type Derived struct {
-	Summaries []uniformity.Summary // one per plane
-	SmallMaps []SmallMap           // one per plane
-	Tallies   []NewTally
-	State     string // colour state word
-}
-
-// NewTally is a tally of the spec version SpecID.
-type NewTally struct {
-	SpecID int64
-	Tally  Tally
-}
-
-// PutMeasurement stores one measurement and makes it current for its wafer and
-// kind when it is the newest by measurement time. It creates the wafer when no
-// run sheet has named it, and the partitions of its month when missing.
-func (l *Load) PutMeasurement(ctx context.Context, m *NewMeasurement) (id int64, err error) {
-	return 0, errStub
-}
-
-// NewRunSheetRow is where one wafer grew.
-type NewRunSheetRow struct {
-	Wafer, Lot, Reactor, Carrier, Ring, Pocket, Recipe, Product string
-	Run                                                         int
-	GrownAt                                                     *time.Time
-}
-
-// PutRunSheet stores rows; a wafer named again takes the newer facts. It marks
-// the wafers' measurements stale.
-func (l *Load) PutRunSheet(ctx context.Context, rows []NewRunSheetRow) error { return errStub }
-
-// Catalogue is what a fab declares by hand: layouts (inside products), recipes
-// and quantities.
-type Catalogue struct {
-	Products   []Product
-	Recipes    []Recipe
-	Quantities []quantity.Quantity
-}
-
-// PutCatalogue inserts or updates and marks measurements of changed products
-// and recipes stale.
-func (l *Load) PutCatalogue(ctx context.Context, c Catalogue) error { return errStub }
-
-// PutSpec stores document as the next version of its spec, or answers the
-// existing version when the document is the same as the latest. It marks
-// measurements of its products and kind stale. Name, Title, Kind, Products and
-// Document of s are used.
-func (l *Load) PutSpec(ctx context.Context, s Spec) (Spec, error) { return Spec{}, errStub }
-
-// PutProfile stores a reading profile by name, a new version when it changed.
-func (l *Load) PutProfile(ctx context.Context, name, document string) error { return errStub }
-
-// Commit records the source as stored and commits. src.SHA256 stored before
-// gives analytics.ErrDuplicate (naming the earlier source and when) and rolls
-// back.
-func (l *Load) Commit(ctx context.Context, src Source) (id int64, err error) { return 0, errStub }
-
-// Rollback gives the load up; harmless after Commit.
-func (l *Load) Rollback(ctx context.Context) {}
-
-// RefuseSource records a source that could not be read.
-func (s *Store) RefuseSource(ctx context.Context, src Source) (id int64, err error) {
-	return 0, errStub
-}
-
-// SourceByHash finds a stored source by the hex SHA-256 of its bytes;
-// analytics.ErrNotFound when there is none.
-func (s *Store) SourceByHash(ctx context.Context, sha256 string) (*Source, error) {
-	return nil, errStub
-}
-
-// Sources lists newest first. state "" = all. Cursor as in Wafers.
-func (s *Store) Sources(ctx context.Context, state string, limit int, cursor string) (rows []Source, next string, err error) {
-	return nil, "", errStub
-}
-
-// Source finds one.
-func (s *Store) Source(ctx context.Context, id int64) (*Source, error) { return nil, errStub }
-
-// StaleMeasurements gives up to limit measurements whose derived numbers wait
-// to be made again.
-func (s *Store) StaleMeasurements(ctx context.Context, limit int) ([]int64, error) {
-	return nil, errStub
-}
-
-// ReplaceDerived stores derived numbers anew and clears the stale mark.
-func (s *Store) ReplaceDerived(ctx context.Context, measurementID int64, d Derived) error {
-	return errStub
-}
-
-// ---- reading
-
-// Wafers lists wafers, newest measurement first. Bad cursors and limits are
-// analytics.ErrInvalid.
-func (s *Store) Wafers(ctx context.Context, f WaferFilter) (*WaferPage, error) { return nil, errStub }
-
-// FilterChoices lists what the wafers list can be filtered by.
-func (s *Store) FilterChoices(ctx context.Context) (*FilterChoices, error) { return nil, errStub }
-
-// Wafer finds a wafer by name.
-func (s *Store) Wafer(ctx context.Context, name string) (*Wafer, error) { return nil, errStub }
-
-// Measurements lists a wafer's measurements, newest first.
-func (s *Store) Measurements(ctx context.Context, waferID int64) ([]Measurement, error) {
-	return nil, errStub
-}
-
-// Measurement finds one by its number.
-func (s *Store) Measurement(ctx context.Context, id int64) (*Measurement, error) {
-	return nil, errStub
-}
-
-// Grid reads a measurement's die grid (cached by hash).
-func (s *Store) Grid(ctx context.Context, hash string) (*wafermap.Grid, error) { return nil, errStub }
-
-// Planes reads the named planes of one measurement in the order asked; none
-// named = all, in display order. A missing one is analytics.ErrNotFound.
-func (s *Store) Planes(ctx context.Context, m *Measurement, quantities ...string) ([]wafermap.Plane, error) {
-	return nil, errStub
-}
-
-// StoredPlane is a plane as it lies in the database: see EncodePlane.
-type StoredPlane struct {
-	Encoding   wafermap.Encoding
-	Base       float64
-	Resolution float64
-	N          int
-	Data       []byte // values split by significance, low bytes first
-}
-
-// StoredPlane reads one plane without decoding it, for the page.
-func (s *Store) StoredPlane(ctx context.Context, m *Measurement, quantity string) (*StoredPlane, error) {
-	return nil, errStub
-}
-
-// EncodePlane packs a plane as it is stored.
-func EncodePlane(p *wafermap.Plane) (StoredPlane, error) { return StoredPlane{}, errStub }
-
-// DecodePlane is the inverse of EncodePlane. Damaged data is analytics.ErrInvalid.
-func DecodePlane(quantity string, s StoredPlane) (wafermap.Plane, error) {
-	return wafermap.Plane{}, errStub
-}
-
-// Summaries lists a measurement's summaries in display order.
-func (s *Store) Summaries(ctx context.Context, measurementID int64) ([]Summary, error) {
-	return nil, errStub
-}
-
-// SmallMap reads the small map of one quantity.
-func (s *Store) SmallMap(ctx context.Context, measurementID int64, quantity string) (*SmallMap, error) {
-	return nil, errStub
-}
-
-// Tallies lists the stored tallies of a measurement.
-func (s *Store) Tallies(ctx context.Context, measurementID int64) ([]Tally, error) {
-	return nil, errStub
-}
-
-// Specs lists the latest version of every spec by name.
-func (s *Store) Specs(ctx context.Context) ([]Spec, error) { return nil, errStub }
-
-// Spec finds one; version 0 = the latest.
-func (s *Store) Spec(ctx context.Context, name string, version int) (*Spec, error) {
-	return nil, errStub
-}
-
-// SpecVersions lists every version of a spec, newest first.
-func (s *Store) SpecVersions(ctx context.Context, name string) ([]Spec, error) { return nil, errStub }
-
-// SpecYield is one wafer's stored yield under a spec's latest version.
-type SpecYield struct {
-	Wafer       string    `json:"wafer"`
-	Lot         string    `json:"lot"`
-	MeasuredAt  time.Time `json:"measured_at"`
-	Good        int       `json:"good"`
-	Denominator int       `json:"denominator"`
-}
-
-// SpecYields lists current measurements tallied under a spec, newest first.
-func (s *Store) SpecYields(ctx context.Context, name string, limit int) ([]SpecYield, error) {
-	return nil, errStub
-}
-
-func (s *Store) Products(ctx context.Context) ([]Product, error)             { return nil, errStub }
-func (s *Store) Recipes(ctx context.Context) ([]Recipe, error)               { return nil, errStub }
-func (s *Store) Profiles(ctx context.Context) ([]Profile, error)             { return nil, errStub }
-func (s *Store) Quantities(ctx context.Context) ([]quantity.Quantity, error) { return nil, errStub }
-
-// Runs lists growth runs of a reactor ("" = all), newest first.
-func (s *Store) Runs(ctx context.Context, reactor string, limit int) ([]GrowthRun, error) {
-	return nil, errStub
-}
-
-// WriteDiesCSV streams every die of a measurement: x, y, the quantities.
-func (s *Store) WriteDiesCSV(ctx context.Context, w io.Writer, m *Measurement, quantities ...string) error {
-	return errStub
+func isEOF(err error) bool {
+	return errors.Is(err, io.EOF) || errors.Is(err, io.ErrUnexpectedEOF) || strings.HasSuffix(err.Error(), "broken pipe")
 }

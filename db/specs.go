@@ -1,0 +1,157 @@
+package db
+
+import (
+	"context"
+	"errors"
+	"time"
+
+	"github.com/jackc/pgx/v5"
+)
+
+const selectSpec = `SELECT id, name, version, title, kind, products, document, stored_at, latest FROM spec`
+
+func collectSpecs(rows pgx.Rows, err error) ([]Spec, error) {
+	if err != nil {
+		return nil, err
+	}
+	specs, err := pgx.CollectRows(rows, pgx.RowToStructByPos[Spec])
+	if specs == nil {
+		specs = []Spec{}
+	}
+	return specs, err
+}
+
+// Specs lists the latest version of every spec by name.
+func (s *Store) Specs(ctx context.Context) (specs []Spec, err error) {
+	defer wrap(&err, "specifications")
+	return collectSpecs(s.pool.Query(ctx, selectSpec+` WHERE latest ORDER BY name`))
+}
+
+// Spec finds one; version 0 = the latest.
+func (s *Store) Spec(ctx context.Context, name string, version int) (spec *Spec, err error) {
+	defer wrap(&err, "specification %q version %d", name, version)
+	rows, err := s.pool.Query(ctx, selectSpec+` WHERE name = $1 AND (version = $2 OR ($2 = 0 AND latest))`, name, version)
+	if err != nil {
+		return nil, err
+	}
+	one, err := pgx.CollectExactlyOneRow(rows, pgx.RowToStructByPos[Spec])
+	return &one, err
+}
+
+// SpecVersions lists every version of a spec, newest first.
+func (s *Store) SpecVersions(ctx context.Context, name string) (specs []Spec, err error) {
+	defer wrap(&err, "versions of specification %q", name)
+	return collectSpecs(s.pool.Query(ctx, selectSpec+` WHERE name = $1 ORDER BY version DESC`, name))
+}
+
+// SpecsFor lists the latest version of every spec that bins measurements of a
+// kind of a product's wafers.
+func (s *Store) SpecsFor(ctx context.Context, product, kind string) (specs []Spec, err error) {
+	defer wrap(&err, "specifications of product %q", product)
+	return specsFor(ctx, s.pool, product, kind)
+}
+
+func specsFor(ctx context.Context, q querier, product, kind string) ([]Spec, error) {
+	return collectSpecs(q.Query(ctx, selectSpec+` WHERE latest AND kind = $2 AND $1 = ANY (products) ORDER BY name`, product, kind))
+}
+
+// PutSpec stores document as the next version of its spec, or answers the
+// existing version when the document is the same as the latest. It marks
+// measurements of its products and kind stale. Name, Title, Kind, Products and
+// Document of s are used.
+func (l *Load) PutSpec(ctx context.Context, s Spec) (out Spec, err error) {
+	defer wrap(&err, "store specification %q", s.Name)
+	l.mu.Lock()
+	defer l.mu.Unlock()
+	// Two versions stored at once take turns, so that numbers have no gap.
+	if _, err := l.tx.Exec(ctx, `SELECT pg_advisory_xact_lock(hashtext('epitally.spec'), hashtext($1))`, s.Name); err != nil {
+		return out, err
+	}
+	rows, err := l.tx.Query(ctx, selectSpec+` WHERE name = $1 AND latest`, s.Name)
+	if err != nil {
+		return out, err
+	}
+	latest, err := pgx.CollectExactlyOneRow(rows, pgx.RowToStructByPos[Spec])
+	if err != nil && !errors.Is(err, pgx.ErrNoRows) {
+		return out, err
+	}
+	if latest.Document == s.Document {
+		return latest, nil
+	}
+	if s.Products == nil {
+		s.Products = []string{}
+	}
+	batch := &pgx.Batch{}
+	batch.Queue(`UPDATE spec SET latest = false WHERE name = $1 AND latest`, s.Name)
+	batch.Queue(`INSERT INTO spec (name, version, title, kind, products, document, latest) VALUES ($1, $2, $3, $4, $5, $6, true)`,
+		s.Name, latest.Version+1, s.Title, s.Kind, s.Products, s.Document)
+	batch.Queue(`
+		UPDATE measurement m SET stale = true
+		FROM wafer w JOIN product p ON p.id = w.product_id
+		WHERE w.id = m.wafer_id AND m.kind = $1 AND p.name = ANY ($2)`, s.Kind, append(s.Products, latest.Products...))
+	if err := l.tx.SendBatch(ctx, batch).Close(); err != nil {
+		return out, err
+	}
+	clear(l.specs)
+	rows, err = l.tx.Query(ctx, selectSpec+` WHERE name = $1 AND latest`, s.Name)
+	if err != nil {
+		return out, err
+	}
+	return pgx.CollectExactlyOneRow(rows, pgx.RowToStructByPos[Spec])
+}
+
+// SpecYield is one wafer's stored yield under a spec's latest version.
+type SpecYield struct {
+	Wafer       string    `json:"wafer"`
+	Lot         string    `json:"lot"`
+	MeasuredAt  time.Time `json:"measured_at"`
+	Good        int       `json:"good"`
+	Denominator int       `json:"denominator"`
+}
+
+// SpecYields lists current measurements tallied under a spec, newest first.
+func (s *Store) SpecYields(ctx context.Context, name string, limit int) (yields []SpecYield, err error) {
+	defer wrap(&err, "yields under specification %q", name)
+	rows, err := s.pool.Query(ctx, `
+		SELECT w.name, w.lot, m.measured_at, t.good, t.denominator
+		FROM spec sp
+		JOIN tally t ON t.spec_id = sp.id
+		JOIN measurement m ON m.wafer_id = t.wafer_id AND m.id = t.measurement_id AND m.measured_at = t.measured_at AND m.is_current
+		JOIN wafer w ON w.id = m.wafer_id
+		WHERE sp.name = $1 AND sp.latest ORDER BY m.measured_at DESC, m.id DESC LIMIT $2`, name, limit)
+	if err != nil {
+		return nil, err
+	}
+	yields, err = pgx.CollectRows(rows, pgx.RowToStructByPos[SpecYield])
+	if yields == nil {
+		yields = []SpecYield{}
+	}
+	return yields, err
+}
+
+// PutProfile stores a reading profile by name, a new version when it changed.
+func (l *Load) PutProfile(ctx context.Context, name, document string) (err error) {
+	defer wrap(&err, "store reading profile %q", name)
+	l.mu.Lock()
+	defer l.mu.Unlock()
+	_, err = l.tx.Exec(ctx, `
+		WITH latest AS (SELECT version, document FROM reading_profile WHERE name = $1 ORDER BY version DESC LIMIT 1)
+		INSERT INTO reading_profile (name, version, document)
+		SELECT $1, coalesce((SELECT version FROM latest), 0) + 1, $2
+		WHERE (SELECT document FROM latest) IS DISTINCT FROM $2`, name, document)
+	return err
+}
+
+// Profiles lists the latest version of every reading profile by name.
+func (s *Store) Profiles(ctx context.Context) (ps []Profile, err error) {
+	defer wrap(&err, "reading profiles")
+	rows, err := s.pool.Query(ctx, `SELECT DISTINCT ON (name) name, version, document, stored_at FROM reading_profile ORDER BY name, version DESC`)
+	if err != nil {
+		return nil, err
+	}
+	ps, err = pgx.CollectRows(rows, pgx.RowToStructByPos[Profile])
+	if ps == nil {
+		ps = []Profile{}
+	}
+	return ps, err
+}
