@@ -56,9 +56,9 @@ const noDie = math.MinInt32
 // axis gives the die coordinate under each pixel of an axis, noDie between dies.
 func (v *view) axis(pitch, centre float64, flip bool) []int {
 	out := make([]int, v.size)
-	half := 0.5
+	end := 1.0
 	if d := pitch * v.pxPerMM; d >= gapFrom {
-		half -= 0.5 / d
+		end = 0.5 - 1/d - 1e-9 // one pixel in a die's width is the line between dies
 	}
 	for i := range out {
 		mm := v.mm(i)
@@ -66,8 +66,8 @@ func (v *view) axis(pitch, centre float64, flip bool) []int {
 			mm = -mm
 		}
 		at := mm/pitch + centre
-		die := math.Round(at)
-		if math.Abs(at-die) > half {
+		die := math.Floor(at + 0.5)
+		if at-die >= end {
 			out[i] = noDie
 		} else {
 			out[i] = int(die)

@@ -57,12 +57,13 @@ export function shade(plane, low, high, steps) {
 export function axis(n, middle, pxPerMM, pitch, centre, flip) {
   const out = new Int32Array(n);
   const size = pitch * pxPerMM;
-  const half = size >= GAP_FROM ? 0.5 - 0.5 / size : 0.5;
+  // One pixel in a die's width is the line, taken off its far side.
+  const end = size >= GAP_FROM ? 0.5 - 1 / size - 1e-9 : 1;
   for (let p = 0; p < n; p++) {
     const mm = (p + 0.5 - middle) / pxPerMM;
     const at = (flip ? -mm : mm) / pitch + centre;
     const die = Math.round(at);
-    out[p] = Math.abs(at - die) > half ? BETWEEN : die;
+    out[p] = at - die >= end ? BETWEEN : die;
   }
   return out;
 }
