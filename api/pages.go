@@ -25,7 +25,6 @@ func (s *Server) registerPages(e *echo.Echo) {
 	e.GET("/loads", s.pageLoads)
 	e.GET("/loads/:id", s.pageLoad)
 	e.GET("/assets/*", echo.WrapHandler(s.pages.Assets()))
-	e.HEAD("/assets/*", echo.WrapHandler(s.pages.Assets()))
 }
 
 // render answers with a page, whole or not at all.

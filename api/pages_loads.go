@@ -111,7 +111,7 @@ func (s *Server) pageLoad(c echo.Context) error {
 	}
 	src, err := s.store.Source(c.Request().Context(), id)
 	if err != nil {
-		return err
+		return missing(err, "there is no load %d: its number stands under Loads", id)
 	}
 	page := web.LoadPage{Name: src.Name, State: src.State, Reason: src.Reason, Place: placeWords(src), Notices: src.Notices}
 	page.Base = s.base(c, web.Base{Title: src.Name, Section: "loads", Finding: web.LoadSentence(src.Name, src.State, src.Wafers, src.Dies)})

@@ -71,7 +71,7 @@ func (s *Server) pageSpec(c echo.Context) error {
 	}
 	sp, err := s.store.Spec(ctx, name, version)
 	if err != nil {
-		return err
+		return missing(err, "there is no such version of a specification %s: see Bins", name)
 	}
 	versions, err := s.store.SpecVersions(ctx, name)
 	if err != nil {
@@ -176,7 +176,7 @@ func (s *Server) waferYields(c echo.Context, spec string) ([]web.WaferYield, err
 func (s *Server) pageSpecYields(c echo.Context) error {
 	name := pathText(c, "spec")
 	if _, err := s.store.Spec(c.Request().Context(), name, 0); err != nil {
-		return err
+		return missing(err, "there is no specification %s: see Bins", name)
 	}
 	yields, err := s.waferYields(c, name)
 	if err != nil {

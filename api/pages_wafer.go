@@ -40,9 +40,10 @@ func (s *Server) pageWafer(c echo.Context) error {
 // waferInput reads a wafer, the measurement asked for and its summaries.
 func (s *Server) waferInput(c echo.Context) (*web.WaferInput, *db.Measurement, error) {
 	ctx := c.Request().Context()
-	w, err := s.store.Wafer(ctx, pathText(c, "wafer"))
+	name := pathText(c, "wafer")
+	w, err := s.store.Wafer(ctx, name)
 	if err != nil {
-		return nil, nil, err
+		return nil, nil, missing(err, "there is no wafer %s: look for it under Wafers", name)
 	}
 	in := &web.WaferInput{Wafer: w.Name, Zone: s.zone, Shown: queryText(c, "quantity"), View: queryText(c, "view"),
 		Growth: web.Growth{Lot: w.Lot, Reactor: w.Reactor, Carrier: w.Carrier, Ring: w.Ring, Pocket: w.Pocket, Recipe: w.Recipe, Product: w.Product, Run: w.Run, GrownAt: w.GrownAt}}
@@ -161,7 +162,8 @@ func (s *Server) specAsked(c echo.Context) (*db.Spec, error) {
 		}
 		version = n
 	}
-	return s.store.Spec(c.Request().Context(), name, version)
+	sp, err := s.store.Spec(c.Request().Context(), name, version)
+	return sp, missing(err, "there is no such version of a specification %s: see Bins", name)
 }
 
 func specOptions(specs []db.Spec, chosen *db.Spec, kind string, fits func(*db.Spec) bool) []web.Option {
