@@ -25,15 +25,15 @@ const policy = "default-src 'none'; script-src 'self'; style-src 'self'; img-src
 // galleryServer serves the gallery, and one wafer more than a million dies.
 func galleryServer(t *testing.T) *httptest.Server {
 	t.Helper()
-	files, err := Gallery(nil)
+	built, err := NewPages(nil)
 	if err != nil {
 		t.Fatal(err)
 	}
-	set, err := readAssets(nil)
+	files, err := built.Gallery()
 	if err != nil {
 		t.Fatal(err)
 	}
-	pages, err := newPages(set, "assets/")
+	pages, err := newPages(built.assets, "assets/")
 	if err != nil {
 		t.Fatal(err)
 	}

@@ -5,28 +5,41 @@ import (
 	"encoding/base64"
 	"encoding/binary"
 	"fmt"
-	"io/fs"
 	"math"
+	"os"
+	"path/filepath"
 	"strings"
 
 	"epitally/analytics/wafermap"
 )
 
+// WriteGallery writes the gallery into the folder dir, making it when missing.
+func (p *Pages) WriteGallery(dir string) error {
+	files, err := p.Gallery()
+	if err != nil {
+		return err
+	}
+	if err := os.MkdirAll(filepath.Join(dir, "assets"), 0o755); err != nil {
+		return err
+	}
+	for name, b := range files {
+		if err := os.WriteFile(filepath.Join(dir, filepath.FromSlash(name)), b, 0o644); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
 // Gallery renders every page from canned data, without a database: file name →
 // contents. Pages stand side by side with an assets folder and carry the data of
 // their maps inside themselves, so that a folder of them opens in any browser.
-// assets is as in NewPages.
-func Gallery(assets fs.FS) (map[string][]byte, error) {
-	set, err := readAssets(assets)
-	if err != nil {
-		return nil, err
-	}
-	pages, err := newPages(set, "assets/")
+func (p *Pages) Gallery() (map[string][]byte, error) {
+	pages, err := newPages(p.assets, "assets/")
 	if err != nil {
 		return nil, err
 	}
 	files := map[string][]byte{}
-	for name, b := range set.files {
+	for name, b := range p.assets.files {
 		files["assets/"+name] = b
 	}
 	var index strings.Builder

@@ -14,23 +14,19 @@ func TestGalleryRendersEveryPage(t *testing.T) {
 	if dir == "" {
 		assets = fakeAssets()
 	}
-	files, err := Gallery(assets)
+	p, err := NewPages(assets)
 	if err != nil {
 		t.Fatal(err)
 	}
-	for name, b := range files {
-		if len(b) == 0 {
-			t.Errorf("%s is empty", name)
-		}
-		if dir == "" {
-			continue
-		}
-		path := filepath.Join(dir, name)
-		if err := os.MkdirAll(filepath.Dir(path), 0o755); err != nil {
-			t.Fatal(err)
-		}
-		if err := os.WriteFile(path, b, 0o644); err != nil {
-			t.Fatal(err)
+	if dir == "" {
+		dir = t.TempDir()
+	}
+	if err := p.WriteGallery(dir); err != nil {
+		t.Fatal(err)
+	}
+	for _, g := range galleryPages() {
+		if info, err := os.Stat(filepath.Join(dir, g.name+".html")); err != nil || info.Size() == 0 {
+			t.Errorf("%s was not written: %v", g.name, err)
 		}
 	}
 }
