@@ -56,7 +56,7 @@ func (d *deriver) derive(in dies, targets []db.Target, specs []db.Spec) (db.Deri
 		target, window := targetOf(targets, q.Name)
 		s := frame.Summarise(p, q, target)
 		out.Summaries = append(out.Summaries, s)
-		m := frame.SmallMap(p)
+		m := frame.Paint(p, s.Q01, s.Q99)
 		out.SmallMaps = append(out.SmallMaps, db.SmallMap{Quantity: q, Size: m.Size, Low: m.Low, High: m.High, Cells: m.Cells})
 		if !math.IsNaN(target) && (out.State == "" || q.Name == "dominant_wavelength_nm") {
 			out.State = uniformity.ColourState(s, window)

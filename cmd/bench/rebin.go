@@ -94,3 +94,28 @@ func best(n int, run func() (time.Duration, error)) (time.Duration, error) {
 	sort.Slice(times, func(i, j int) bool { return times[i] < times[j] })
 	return times[0], nil
 }
+
+// rebinPart works on the planes as they lie in the database, without putting
+// their bytes together first.
+func (b *bench) rebinPart(ctx context.Context, spec *binning.Spec, ids []int64) (dies int, err error) {
+	binner := spec.NewBinner()
+	counts := make([]int, len(spec.Cells()))
+	lanes := make([]binning.Lanes, len(spec.Quantities()))
+	err = b.store.EachStoredPlanes(ctx, ids, spec.Quantities(), func(_ int64, planes []db.StoredPlane) error {
+		for i := range planes {
+			lane, err := planes[i].Lanes()
+			if err != nil {
+				return err
+			}
+			lanes[i] = lane
+		}
+		if err := binner.BinLanes(nil, counts, lanes, nil); err != nil {
+			return err
+		}
+		for _, n := range counts {
+			dies += n
+		}
+		return nil
+	})
+	return dies, err
+}
