@@ -10,7 +10,7 @@ import (
 )
 
 // mostBars is how many bars a chart of bins has at most.
-const mostBars = 48
+const mostBars = 24
 
 // Binned is dies per bin, in words.
 type Binned struct {
@@ -47,10 +47,11 @@ func BinChart(b Binned) *Chart {
 	c.Caption = fmt.Sprintf("Dies of this measurement under %s; shares are of %s %s.", b.Spec, Count(b.Denominator), over(b.OverLayout))
 	if len(shown) > mostBars {
 		shown = largest(shown, mostBars)
-		c.Caption += fmt.Sprintf(" The %d fullest are drawn; the table has all.", mostBars)
+		c.Caption += fmt.Sprintf(" The %d fullest are drawn, the lost dies first; the table has all.", mostBars)
 	} else if left > 0 {
 		c.Caption += fmt.Sprintf(" %s without dies left out.", Plural(left, "bin or reason", "bins and reasons"))
 	}
+	lostFirst(shown)
 	c.Label, c.Tall = "Dies per bin and per reject reason. "+c.Caption, len(shown)
 	var names []string
 	var data []opts.BarData
@@ -74,6 +75,18 @@ func BinChart(b Binned) *Chart {
 	all["grid"] = map[string]any{"left": 12, "right": 130, "top": 8, "bottom": 52, "containLabel": true}
 	c.Options = options(all)
 	return c
+}
+
+// lostFirst puts what is not sold before what is, the most dies first, and
+// leaves the bins that are sold in the specification's order.
+func lostFirst(cells []MapCell) {
+	sort.SliceStable(cells, func(i, j int) bool {
+		a, b := cells[i].Class != "sellable", cells[j].Class != "sellable"
+		if a != b {
+			return a
+		}
+		return a && cells[i].Dies > cells[j].Dies
+	})
 }
 
 // Token names the look for the scripts: "bin:3:rise", "reject:0:" or "missing".

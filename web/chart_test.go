@@ -80,10 +80,16 @@ func TestBinChartDrawsTheFullestOfMany(t *testing.T) {
 	for i := range 100 {
 		b.Cells = append(b.Cells, MapCell{Name: "B", Class: "sellable", Dies: i})
 	}
+	b.Cells = append(b.Cells, MapCell{Name: "leaky", Class: "reject", Dies: 80}, MapCell{Name: "open", Class: "reject", Dies: 90})
 	c := BinChart(b)
 	points := decoded(t, c)["series"].([]any)[0].(map[string]any)["data"].([]any)
-	if len(points) != mostBars || len(c.Table.Rows) != 100 || !strings.Contains(c.Caption, "48 fullest") {
+	if len(points) != mostBars || len(c.Table.Rows) != 102 || !strings.Contains(c.Caption, "24 fullest") {
 		t.Errorf("%d bars, %d rows, caption %q", len(points), len(c.Table.Rows), c.Caption)
+	}
+	for i, want := range []string{"open · reject: 90", "leaky · reject: 80"} {
+		if name := points[i].(map[string]any)["name"].(string); !strings.HasPrefix(name, want) {
+			t.Errorf("bar %d is %q, want %q: the lost dies come first", i, name, want)
+		}
 	}
 }
 

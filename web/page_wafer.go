@@ -132,10 +132,8 @@ func (c *Chart) HeightClass() string {
 		return "chart chart-6"
 	case c.Tall <= 12:
 		return "chart chart-12"
-	case c.Tall <= 24:
-		return "chart chart-24"
 	default:
-		return "chart chart-48"
+		return "chart chart-24"
 	}
 }
 
