@@ -1,5 +1,5 @@
 // Everything of a page but its charts.
-import { announce, isDark, switchGround, watchSystem } from './ground.js';
+import { isDark, switchGround, watchSystem } from './ground.js';
 import { startMap } from './map.js';
 import { startChooser } from './chooser.js';
 import { drawSwatches } from './swatch.js';
@@ -35,5 +35,5 @@ document.addEventListener('ground', () => {
   drawSwatches();
 });
 document.addEventListener('parts', () => drawSwatches());
-window.addEventListener('beforeprint', announce);
-window.addEventListener('afterprint', announce);
+window.addEventListener('beforeprint', () => drawSwatches(true));
+window.addEventListener('afterprint', () => drawSwatches());

@@ -13,9 +13,11 @@ echarts.use([BarChart, LineChart, ScatterChart, GridComponent, MarkAreaComponent
 const FONT = 'system-ui, "Segoe UI", Roboto, "Noto Sans", "DejaVu Sans", sans-serif';
 const live = new Map(); // element → chart
 
+const PRINT = { ink: '#000', faint: '#666', hair: '#bbb', accent: '#0f6e78', band: 'rgba(0, 0, 0, 0.1)', paper: '#fff', line: '#666' };
+
 function colours() {
   const style = getComputedStyle(document.documentElement);
-  const get = (name) => style.getPropertyValue(`--${name}`).trim();
+  const get = (name) => (printing && PRINT[name]) || style.getPropertyValue(`--${name}`).trim();
   return { ink: get('ink'), faint: get('faint'), hair: get('hair'), accent: get('accent'), band: get('band'), paper: get('paper'), line: get('line') };
 }
 
@@ -71,14 +73,19 @@ function decimalsOf(v) {
   return s.includes('.') ? s.split('.')[1].length : 0;
 }
 
+// On paper charts are drawn on the light ground at the size they have.
+let printing = false;
+
 function draw(figure) {
   const box = figure.querySelector('.chart');
   const block = figure.querySelector('script[type="application/json"]');
-  live.get(box)?.dispose();
+  const old = live.get(box);
+  const size = printing && old ? { width: old.getWidth(), height: old.getHeight() } : { width: box.clientWidth, height: box.clientHeight };
+  old?.dispose();
   const ink = colours();
   const data = readMapData();
-  const palette = data && (isDark() ? data.palette.dark : data.palette.light);
-  const chart = echarts.init(box, null, { renderer: 'canvas' });
+  const palette = data && (isDark() && !printing ? data.palette.dark : data.palette.light);
+  const chart = echarts.init(box, null, { renderer: 'canvas', ...size });
   const options = dress(fill(JSON.parse(block.textContent), ink, palette), ink);
   chart.setOption(options);
   live.set(box, chart);
@@ -113,4 +120,12 @@ function drawAll() {
 
 drawAll();
 for (const name of ['ground', 'parts']) document.addEventListener(name, drawAll);
-new ResizeObserver(() => live.forEach((chart) => chart.resize())).observe(document.body);
+new ResizeObserver(() => {
+  if (!printing) live.forEach((chart, box) => chart.resize({ width: box.clientWidth, height: box.clientHeight }));
+}).observe(document.body);
+for (const [name, now] of [['beforeprint', true], ['afterprint', false]]) {
+  window.addEventListener(name, () => {
+    printing = now;
+    drawAll();
+  });
+}

@@ -13,7 +13,7 @@ export function drawLegend(map, palette, scale) {
     return;
   }
   const ratio = map.ratio;
-  const width = Math.round(canvas.clientWidth * ratio);
+  const width = map.printing ? canvas.width : Math.round(canvas.clientWidth * ratio);
   canvas.width = width;
   canvas.height = HEIGHT * ratio;
   const ctx = canvas.getContext('2d');

@@ -31,12 +31,18 @@ class WaferMap {
     listen(this);
     new ResizeObserver(() => this.redraw()).observe(canvas);
     document.addEventListener('ground', () => this.redraw());
-    window.matchMedia('print').addEventListener('change', () => this.redrawNow());
+    // On paper the canvas keeps its pixels and is only scaled: it is drawn on the
+    // light ground once, before the page is laid out for print.
+    for (const [name, printing] of [['beforeprint', true], ['afterprint', false]]) {
+      window.addEventListener(name, () => {
+        this.printing = printing;
+        this.redrawNow();
+      });
+    }
   }
 
   palette() {
-    const print = window.matchMedia('print').matches;
-    return isDark() && !print ? this.data.palette.dark : this.data.palette.light;
+    return isDark() && !this.printing ? this.data.palette.dark : this.data.palette.light;
   }
 
   // fetched gives what a URL holds, decoded; kept for as long as the page lives.
@@ -120,6 +126,7 @@ class WaferMap {
 
   // size sets both canvases to whole device pixels and gives their side.
   size() {
+    if (this.printing && this.canvas.width >= 64) return this.canvas.width;
     this.ratio = Math.min(window.devicePixelRatio || 1, 2);
     const side = Math.max(Math.round(this.canvas.clientWidth * this.ratio), 64);
     for (const c of [this.canvas, this.overlay, this.hidden]) {
@@ -129,7 +136,7 @@ class WaferMap {
   }
 
   redraw() {
-    if (this.queued) return;
+    if (this.queued || this.printing) return;
     this.queued = true;
     requestAnimationFrame(() => {
       this.queued = false;

@@ -29,9 +29,9 @@ export function drawLook(canvas, look, palette) {
   ctx.putImageData(image, 0, 0);
 }
 
-export function drawSwatches() {
+export function drawSwatches(printing = false) {
   const data = readMapData();
   if (!data) return;
-  const palette = isDark() ? data.palette.dark : data.palette.light;
+  const palette = isDark() && !printing ? data.palette.dark : data.palette.light;
   for (const canvas of document.querySelectorAll('canvas[data-look]')) drawLook(canvas, canvas.dataset.look, palette);
 }
