@@ -4,7 +4,6 @@ import (
 	"context"
 	"errors"
 	"fmt"
-	"math"
 	"slices"
 	"strconv"
 	"strings"
@@ -99,10 +98,11 @@ func measurementInput(m *db.Measurement) web.MeasurementInput {
 }
 
 func plotted(s db.Summary, targets []db.Target) web.Plotted {
-	p := web.Plotted{Quantity: s.Quantity, Summary: s.Summary, Target: math.NaN()}
+	// The target that the summary was made with, as on the server's pictures.
+	p := web.Plotted{Quantity: s.Quantity, Summary: s.Summary, Target: s.Summary.Target}
 	for _, t := range targets {
 		if t.Quantity == s.Quantity.Name {
-			p.Target, p.Window = t.Value, t.Window
+			p.Window = t.Window
 		}
 	}
 	return p
@@ -247,7 +247,7 @@ func (s *Server) summaryChart(c echo.Context, in *web.WaferInput, name, file str
 
 // specInput bins the dies of a measurement now, from its planes.
 func (s *Server) specInput(ctx context.Context, m *db.Measurement, spec *db.Spec) (*web.SpecInput, error) {
-	b, err := s.binForPage(ctx, m, spec)
+	b, err := s.bin(ctx, m, spec)
 	if err != nil {
 		return nil, err
 	}
