@@ -93,12 +93,13 @@ func drawnMS(ctx context.Context, url string) (float64, error) {
 	defer cancel()
 	ctx, cancel = context.WithTimeout(ctx, time.Minute)
 	defer cancel()
-	var text string
-	var ok bool
-	err := chromedp.Run(ctx, chromedp.Navigate(url), chromedp.WaitVisible("canvas[data-drawn-ms]", chromedp.ByQuery),
-		chromedp.AttributeValue("canvas[data-drawn-ms]", "data-drawn-ms", &text, &ok, chromedp.ByQuery))
+	drawn := chromedp.CSS("#map-canvas[data-drawn-ms]")
+	if err := chromedp.Do(ctx, chromedp.Navigate(url), chromedp.WaitVisible(drawn)); err != nil {
+		return 0, fmt.Errorf("open %s: %w", url, err)
+	}
+	attribute, err := chromedp.Run(ctx, chromedp.AttributeValue(drawn, "data-drawn-ms"))
 	if err != nil {
 		return 0, fmt.Errorf("open %s: %w", url, err)
 	}
-	return strconv.ParseFloat(text, 64)
+	return strconv.ParseFloat(attribute.Value, 64)
 }
