@@ -2,7 +2,9 @@ package api
 
 import (
 	"fmt"
+	"regexp"
 	"strconv"
+	"strings"
 	"time"
 
 	"github.com/labstack/echo/v4"
@@ -72,9 +74,13 @@ func (s *Server) lastHour(newest []db.Source) web.LoadsFound {
 			f.Stored++
 		case db.SourceRefused:
 			f.Refused++
-			reasons[src.Reason]++
-			if n := reasons[src.Reason]; n > f.Sharing {
-				f.SharedCause, f.Sharing = src.Reason, n
+			cause := sameButNames.ReplaceAllString(reasonOf(src), "…")
+			reasons[cause]++
+			if n := reasons[cause]; n > f.Sharing {
+				f.SharedCause, f.Sharing = cause, n
+				if n == 1 {
+					f.SharedCause = reasonOf(src)
+				}
 			}
 		}
 	}
@@ -85,10 +91,21 @@ func (s *Server) lastHour(newest []db.Source) web.LoadsFound {
 	return f
 }
 
+// sameButNames finds what differs between reasons of one cause: quoted text and
+// numbers.
+var sameButNames = regexp.MustCompile(`"[^"]*"|\b\d+\b`)
+
+// reasonOf is why a source was refused, without its own name before it.
+func reasonOf(src *db.Source) string { return strings.TrimPrefix(src.Reason, src.Name+": ") }
+
 func (s *Server) loadLine(src *db.Source) web.LoadLine {
-	return web.LoadLine{Name: src.Name, Href: "/loads/" + strconv.FormatInt(src.ID, 10), State: src.State, Format: src.Format,
+	line := web.LoadLine{Name: src.Name, Href: "/loads/" + strconv.FormatInt(src.ID, 10), State: src.State, Format: src.Format,
 		SeenAt: web.Moment(src.SeenAt, s.zone), Bytes: web.Bytes(src.Bytes), Wafers: web.Count(src.Wafers), Dies: web.Count(src.Dies),
-		Reason: src.Reason, Place: placeWords(src), Notices: len(src.Notices)}
+		Reason: reasonOf(src), Place: placeWords(src), Notices: len(src.Notices)}
+	if src.State != db.SourceStored {
+		line.Wafers, line.Dies = "", ""
+	}
+	return line
 }
 
 // placeWords says where in the source it went wrong; "" when that is not known.
@@ -113,7 +130,7 @@ func (s *Server) pageLoad(c echo.Context) error {
 	if err != nil {
 		return missing(err, "there is no load %d: its number stands under Loads", id)
 	}
-	page := web.LoadPage{Name: src.Name, State: src.State, Reason: src.Reason, Place: placeWords(src), Notices: src.Notices}
+	page := web.LoadPage{Name: src.Name, State: src.State, Reason: reasonOf(src), Place: placeWords(src), Notices: src.Notices}
 	page.Base = s.base(c, web.Base{Title: src.Name, Section: "loads", Finding: web.LoadSentence(src.Name, src.State, src.Wafers, src.Dies)})
 	add := func(name, value string) {
 		if value != "" {

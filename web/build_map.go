@@ -70,7 +70,7 @@ func mapQuantity(p Plotted, api string) MapQuantity {
 // markWords says where the flat or notch is.
 func markWords(l *wafermap.Layout) string {
 	if l.Mark == "none" {
-		return "no flat or notch"
+		return "no flat or notch, since none is known"
 	}
 	side := [...]string{"right", "top right", "top", "top left", "left", "bottom left", "bottom", "bottom right"}
 	turn := math.Mod(math.Mod(l.MarkAngleDeg, 360)+360, 360)
