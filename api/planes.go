@@ -128,17 +128,15 @@ func stream(c echo.Context, media string, write func(*bufio.Writer)) error {
 	return w.Flush()
 }
 
-// writePlaneCSV writes x, y and value of every die; no value is an empty cell.
+// writePlaneCSV writes x, y and value of every die, with the decimals its source
+// wrote; no value is an empty cell.
 func writePlaneCSV(w *bufio.Writer, g *wafermap.Grid, p *wafermap.Plane) {
 	w.WriteString("x,y,value\n")
 	line := make([]byte, 0, 64)
 	for i := range g.X {
 		line = strconv.AppendInt(line[:0], int64(g.X[i]), 10)
 		line = strconv.AppendInt(append(line, ','), int64(g.Y[i]), 10)
-		line = append(line, ',')
-		if v := p.Value(i); !math.IsNaN(v) {
-			line = strconv.AppendFloat(line, v, 'f', -1, 64)
-		}
+		line = db.AppendValue(append(line, ','), p, i)
 		w.Write(append(line, '\n'))
 	}
 }

@@ -159,13 +159,18 @@ func (s *Server) putSpec(c echo.Context, parsed *binning.Spec, document []byte) 
 	if err != nil {
 		return nil, false, err
 	}
-	now := s.now()
-	_, err = load.Commit(ctx, db.Source{Name: "API: specification " + parsed.Name, SHA256: hexSHA256(document), Bytes: int64(len(document)),
-		Format: "specification", State: db.SourceStored, SeenAt: now, StoredAt: &now})
-	if errors.Is(err, analytics.ErrDuplicate) {
-		return nil, false, fmt.Errorf("this very document was stored before as an earlier version of %s: change its title or add a comment to make it the latest again: %w", parsed.Name, analytics.ErrDuplicate)
+	hash := hexSHA256(document)
+	switch _, err := s.store.SourceByHash(ctx, hash); {
+	case err == nil:
+		// Going back to an earlier version's document is no second load of a file,
+		// which the hash is there to refuse.
+		hash = ""
+	case !errors.Is(err, analytics.ErrNotFound):
+		return nil, false, err
 	}
-	if err != nil {
+	now := s.now()
+	if _, err = load.Commit(ctx, db.Source{Name: "API: specification " + parsed.Name, SHA256: hash, Bytes: int64(len(document)),
+		Format: "specification", State: db.SourceStored, SeenAt: now, StoredAt: &now, Offset: -1}); err != nil {
 		return nil, false, err
 	}
 	// Read again: what the store says of it now is what is answered.

@@ -52,9 +52,7 @@ func (s *Server) listWafers(c echo.Context, p wafersParams) error {
 func wireRow(r db.WaferRow) waferRowOut {
 	out := waferRowOut{Wafer: wireWafer(r.Wafer), State: r.State}
 	if r.Measurement != nil {
-		m := *r.Measurement
-		m.Notices = full(m.Notices)
-		out.Measurement = &measurementListed{Measurement: m}
+		out.Measurement = &measurementListed{Measurement: *r.Measurement}
 	}
 	if r.Main != nil {
 		main := wireSummary(*r.Main)

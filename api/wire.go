@@ -72,10 +72,15 @@ func wireMeasurement(m db.Measurement) measurementOut {
 	return measurementOut{m, mapped(m.Quantities, wireQuantity)}
 }
 
-// measurementListed is db.Measurement as lists have it.
+// measurementListed is db.Measurement as lists have it: without what the store
+// does not read for a list.
 type measurementListed struct {
 	db.Measurement
+	Grid       *omitted `json:"grid,omitempty"`
+	Layout     *omitted `json:"layout,omitempty"`
+	LayoutDies *omitted `json:"layout_dies,omitempty"`
 	Facts      *omitted `json:"facts,omitempty"`
+	Notices    *omitted `json:"notices,omitempty"`
 	Quantities *omitted `json:"quantities,omitempty"`
 }
 

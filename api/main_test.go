@@ -1,0 +1,9 @@
+package api
+
+import (
+	"testing"
+
+	"epitally/db/dbtest"
+)
+
+func TestMain(m *testing.M) { dbtest.Main(m) }
