@@ -113,10 +113,10 @@ func (s *source) peek(n int) ([]byte, error) {
 	return b, nil
 }
 
-// drain reads to the end, so that the hash covers everything.
-func (s *source) drain() {
+// drain reads to the end, so that the hash covers everything, unless ctx ends.
+func (s *source) drain(ctx context.Context) {
 	block := make([]byte, 64<<10)
-	for s.err == nil {
+	for s.err == nil && ctx.Err() == nil {
 		s.Read(block)
 	}
 }
