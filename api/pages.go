@@ -43,8 +43,8 @@ func (s *Server) base(c echo.Context, b web.Base) web.Base {
 	return b
 }
 
-// csv answers with a chart's table.
-func csv(c echo.Context, chart *web.Chart, name string) error {
+// answerChart answers with a chart's table.
+func answerChart(c echo.Context, chart *web.Chart, name string) error {
 	if chart == nil {
 		return fmt.Errorf("there are no values to chart: %w", analytics.ErrNotFound)
 	}

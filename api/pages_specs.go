@@ -182,5 +182,5 @@ func (s *Server) pageSpecYields(c echo.Context) error {
 	if err != nil {
 		return err
 	}
-	return csv(c, web.YieldsChart(name, yields, s.zone, ""), name+"-yields.csv")
+	return answerChart(c, web.YieldsChart(name, yields, s.zone, ""), name+"-yields.csv")
 }

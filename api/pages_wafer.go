@@ -224,7 +224,7 @@ func (s *Server) pageWaferChart(c echo.Context) error {
 		if err != nil {
 			return err
 		}
-		return csv(c, web.SpecChart(binned, ""), file)
+		return answerChart(c, web.SpecChart(binned, ""), file)
 	}
 	return fmt.Errorf("there is no chart %q: use histogram, radial or bins: %w", name, analytics.ErrNotFound)
 }
@@ -235,9 +235,9 @@ func (s *Server) summaryChart(c echo.Context, in *web.WaferInput, name, file str
 			continue
 		}
 		if name == "radial" {
-			return csv(c, web.RadialChart(p), file)
+			return answerChart(c, web.RadialChart(p), file)
 		}
-		return csv(c, web.HistogramChart(p), file)
+		return answerChart(c, web.HistogramChart(p), file)
 	}
 	if !quantity.ValidName(in.Shown) {
 		return fmt.Errorf("quantity %q is not a quantity's name: %w", in.Shown, analytics.ErrInvalid)
