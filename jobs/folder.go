@@ -115,7 +115,7 @@ const (
 	rankReadings
 )
 
-// rank looks at the first line only; a file that cannot be opened ranks last
+// rank looks at the first lines only; a file that cannot be opened ranks last
 // and gives its error when it is read.
 func (f *Folder) rank(name string, info fs.FileInfo) int {
 	if !info.Mode().IsRegular() {
@@ -129,7 +129,7 @@ func (f *Folder) rank(name string, info fs.FileInfo) int {
 	return rankOf(file)
 }
 
-// rankOf tells by the first line what a source holds.
+// rankOf tells by the first lines what a source holds.
 func rankOf(r io.Reader) int {
 	head := bufio.NewReaderSize(r, 512)
 	if magic, _ := head.Peek(2); bytes.Equal(magic, []byte{0x1f, 0x8b}) {
@@ -137,16 +137,20 @@ func rankOf(r io.Reader) int {
 			head = bufio.NewReaderSize(z, 512)
 		}
 	}
-	line, _ := head.Peek(256)
-	first, _, _ := strings.Cut(string(line), "\n")
-	first = strings.TrimPrefix(first, "\ufeff")
-	switch {
-	case strings.HasPrefix(first, "catalogue:"):
-		return rankCatalogue
-	case strings.HasPrefix(first, "specification:"), strings.HasPrefix(first, "profile:"):
-		return rankDocument
-	case strings.HasPrefix(first, "# epitally: run sheet"):
-		return rankRunSheet
+	text, _ := head.Peek(512)
+	for line := range strings.Lines(strings.TrimPrefix(string(text), "\ufeff")) {
+		line = strings.TrimSpace(line)
+		switch {
+		case strings.HasPrefix(line, "# epitally: run sheet"):
+			return rankRunSheet
+		case strings.HasPrefix(line, "catalogue:"):
+			return rankCatalogue
+		case strings.HasPrefix(line, "specification:"), strings.HasPrefix(line, "profile:"):
+			return rankDocument
+		case line == "", line == "---", strings.HasPrefix(line, "#"): // a document may begin with remarks
+			continue
+		}
+		break
 	}
 	return rankReadings
 }

@@ -88,7 +88,7 @@ func (l *Loader) Load(ctx context.Context, in Incoming) (src db.Source, err erro
 // readInto runs the three stages: read, derive, store. Each hands over one
 // measurement at a time, so that memory holds at most four of them.
 func (l *Loader) readInto(ctx context.Context, tx *db.Load, in Incoming) (reader.Result, error) {
-	group, ctx := errgroup.WithContext(ctx)
+	group, stages := errgroup.WithContext(ctx)
 	read := make(chan *reader.Measurement)
 	derived := make(chan *db.NewMeasurement)
 	var result reader.Result
@@ -96,10 +96,10 @@ func (l *Loader) readInto(ctx context.Context, tx *db.Load, in Incoming) (reader
 
 	group.Go(func() (err error) {
 		defer close(read)
-		result, err = reader.Read(ctx, reader.Input{
+		result, err = reader.Read(stages, reader.Input{
 			Name: in.Name, R: in.R, Profiles: in.Profiles, ProfileName: in.Profile, Zone: l.zone, MaxBytes: l.maxBytes,
 		}, reader.Sink{
-			Measurement: func(m *reader.Measurement) error { return hand(ctx, read, m) },
+			Measurement: func(m *reader.Measurement) error { return hand(stages, read, m) },
 			RunSheet: func(rows []reader.RunSheetRow) error {
 				documents.runSheet = append(documents.runSheet, rows...)
 				return nil
@@ -114,11 +114,11 @@ func (l *Loader) readInto(ctx context.Context, tx *db.Load, in Incoming) (reader
 	group.Go(func() error {
 		defer close(derived)
 		for m := range read {
-			n, err := l.prepare(ctx, tx, m)
+			n, err := l.prepare(stages, tx, m)
 			if err != nil {
 				return err
 			}
-			if err := hand(ctx, derived, n); err != nil {
+			if err := hand(stages, derived, n); err != nil {
 				return err
 			}
 		}
@@ -126,7 +126,7 @@ func (l *Loader) readInto(ctx context.Context, tx *db.Load, in Incoming) (reader
 	})
 	group.Go(func() error {
 		for n := range derived {
-			if _, err := tx.PutMeasurement(ctx, n); err != nil {
+			if _, err := tx.PutMeasurement(stages, n); err != nil {
 				return err
 			}
 			if in.Progress != nil {
