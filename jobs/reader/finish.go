@@ -14,6 +14,9 @@ import (
 func (t *table) measurement(a *about) (*Measurement, error) {
 	n := t.n
 	x, y, line := t.x[:n:n], t.y[:n:n], t.line[:n:n]
+	if err := t.place.apply(x, y, line); err != nil {
+		return nil, err
+	}
 	order := wafermap.Canonical(x, y)
 	if order.Starts != nil && a.duplicates == refuseDuplicates {
 		return nil, duplicateFault(&order, x, y, line)

@@ -109,7 +109,7 @@ func (a *about) declare(value string) error {
 	}
 	q, err := declareQuantity(parts[0], parts[1], parts[2], resolution)
 	if err != nil {
-		fault.Problem, fault.Remedy = err.Error(), ""
+		fault.Problem, fault.Remedy = withoutKind(err), ""
 		return fault
 	}
 	if a.declared == nil {
@@ -168,7 +168,7 @@ func parseLength(text, unit, example string) (float64, error) {
 	}
 	c, err := quantity.Convert(strings.TrimSpace(from), unit)
 	if err != nil {
-		fault.Problem = err.Error()
+		fault.Problem = withoutKind(err)
 		return 0, fault
 	}
 	return convertFloat(v, c), nil

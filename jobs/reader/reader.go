@@ -76,7 +76,7 @@ func Read(ctx context.Context, in Input, sink Sink) (Result, error) {
 		err = (&job{in: in, sink: sink, res: &res, src: src}).read(ctx)
 	}
 	if err != nil && ctx.Err() == nil {
-		src.drain() // a refused source is known by its hash, too
+		src.drain(ctx) // a refused source is known by its hash, too
 	}
 	res.Bytes, res.SHA256 = src.sum()
 	return res, err
@@ -103,8 +103,8 @@ func (j *job) read(ctx context.Context) error {
 		return &analytics.Fault{Line: 1, Column: 1, Offset: -1, Problem: fmt.Sprintf("%q is not a kind of file that is read", first),
 			Remedy: fmt.Sprintf("begin with %q or %q", ownMark, runSheetMark)}
 	}
-	if kind, name := documentKind(head); kind != "" {
-		return j.readDocument(ctx, kind, name)
+	if kind := documentKind(head); kind != "" {
+		return j.readDocument(ctx, kind)
 	}
 	p, err := j.profileFor(formatDelimited)
 	if err != nil {

@@ -37,6 +37,7 @@ type grammar struct {
 	missing   []string // words that mean "no value", besides an empty field
 	loose     bool     // fields after the last known one are passed over
 	stop      string   // a line that begins so ends the table; "" = none
+	comment   string   // lines that begin so are passed over; "" = none
 	spread    bool     // any number of spaces and tabs is one delimiter
 	slow      bool     // every field needs slowField: spread, or a missing word is a number
 }
@@ -49,6 +50,7 @@ type table struct {
 	grammar
 	fields []field
 	cols   []column
+	place  placement
 	src    *lines
 
 	n     int // rows of the wafer at hand
@@ -106,6 +108,10 @@ func (t *table) rows(b []byte) (int, error) {
 			continue
 		case b[i] == '#' && t.comments:
 			return i, nil
+		case t.comment != "" && bytes.HasPrefix(b[i:], []byte(t.comment)):
+			i += bytes.IndexByte(b[i:], '\n') + 1
+			t.src.line++
+			continue
 		case t.stop != "" && bytes.HasPrefix(b[i:], []byte(t.stop)):
 			t.stopped = true
 			return i, nil
