@@ -11,7 +11,7 @@ import (
 
 func cannedWafers() WafersPage {
 	p := WafersPage{Base: dated(Base{Title: "Wafers", Section: "wafers"}), Total: 212, OlderURL: "#older",
-		Quantity: "Small maps show the deviation from the wafer's own target, evenly to both sides: teal is short, ochre long. Yields are under the specification named."}
+		Quantity: "Small maps share one scale, ±5\u202fnm about each wafer's own target: teal is short, ochre long, and what lies beyond takes the end shade."}
 	p.Finding = WafersSentence(WafersFound{Total: 212, ByState: map[string]int{"on colour": 148, "long": 31, "short": 20, "mixed": 11, "unmeasured": 2},
 		Link: func(s string) string { return "#" + s }, Basis: "212 wafers, " + p.MadeAt})
 	for _, f := range []string{"Lot", "Reactor", "Product", "State", "Kind", "Specification"} {

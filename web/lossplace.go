@@ -15,8 +15,8 @@ const (
 )
 
 // LossPlace says where the dies with a code lie: "in the outer 12 mm" for the
-// narrowest ring at the edge, or "in the inner 9 mm" for the smallest disc about
-// the centre, of whole millimetres, that holds 60 % of them and less than 45 % of
+// narrowest ring at the edge, or "within 9 mm of the centre" for the smallest
+// disc about it, of whole millimetres, that holds 60 % of them and less than 45 % of
 // all dies. "" when there is none, or under 20 such dies. codes has one entry per
 // die of the grid.
 func LossPlace(g *wafermap.Grid, l *wafermap.Layout, codes []uint16, code uint16) string {
@@ -45,7 +45,7 @@ func LossPlace(g *wafermap.Grid, l *wafermap.Layout, codes []uint16, code uint16
 	reverse(all)
 	// The innermost ring may reach beyond the centre by part of a millimetre.
 	if w := narrowest(lost, all, total, g.Len()); w > 1 {
-		return "in the inner " + With(float64(w-1), 0, "mm")
+		return "within " + With(float64(w-1), 0, "mm") + " of the centre"
 	}
 	return ""
 }

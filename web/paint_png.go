@@ -138,6 +138,11 @@ func levelsOf(scale string) color.Palette {
 	return out
 }
 
+// SmallMapReach is how far the scale of small maps reaches to both sides of the
+// target, in the quantity's unit (only wavelengths show as deviations, so nm): one
+// scale for all, since they stand together in a list.
+const SmallMapReach = 5
+
 // PaintSmallMap writes the small map as a PNG of one pixel a cell on a
 // transparent ground.
 func PaintSmallMap(w io.Writer, m SmallPicture) error {
@@ -147,9 +152,7 @@ func PaintSmallMap(w io.Writer, m SmallPicture) error {
 	pal := paletteFor(m.Dark)
 	scale, low, high := pal.Magnitude, m.Low, m.High
 	if !math.IsNaN(m.Target) {
-		// The same length on both sides of the target, so that paper is the target.
-		half := max(math.Abs(low-m.Target), math.Abs(high-m.Target))
-		scale, low, high = pal.Deviation, m.Target-half, m.Target+half
+		scale, low, high = pal.Deviation, m.Target-SmallMapReach, m.Target+SmallMapReach
 	}
 	inks := append(color.Palette{color.RGBA{}}, levelsOf(scale)...)
 	index := smallInks(m, low, high)

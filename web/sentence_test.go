@@ -106,7 +106,7 @@ func TestLossPlace(t *testing.T) {
 	if got := where(func(r float64) bool { return r > 38 }); got != "in the outer 8 mm" {
 		t.Errorf("edge ring: %q", got)
 	}
-	if got := where(func(r float64) bool { return r < 10 }); got != "in the inner 8 mm" {
+	if got := where(func(r float64) bool { return r < 10 }); got != "within 8 mm of the centre" {
 		t.Errorf("centre disc: %q", got)
 	}
 	if got := where(func(r float64) bool { return true }); got != "" {
