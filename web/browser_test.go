@@ -167,6 +167,12 @@ func TestMapFollowsKeysAndGround(t *testing.T) {
 		t.Fatal(err)
 	}
 	after := evaluate[string](t, ctx, pixel)
+	if err := chromedp.Do(ctx, chromedp.Focus(chromedp.CSS("#histogram")), chromedp.KeyEvent(kb.ArrowRight)); err != nil {
+		t.Fatal(err)
+	}
+	if spoken := evaluate[string](t, ctx, `document.querySelector('figure[data-chart=histogram] .chart-point').textContent`); !strings.Contains(spoken, "die") {
+		t.Errorf("a chart's first point is spoken as %q", spoken)
+	}
 	for _, want := range []string{"Die", "mm", "Dominant wavelength", "Forward voltage", "under harbour-blue v3"} {
 		if !strings.Contains(readout, want) {
 			t.Errorf("the read-out lacks %q: %s", want, readout)
