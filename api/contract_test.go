@@ -53,7 +53,7 @@ func asText(body io.Reader, _ http.Header, _ *openapi3.SchemaRef, _ openapi3filt
 }
 
 func init() {
-	for _, media := range []string{"text/csv", mediaPNG, mediaPlane, mediaGrid, mediaYAML} {
+	for _, media := range append([]string{"text/csv", mediaPNG, mediaPlane, mediaGrid}, documentMedia...) {
 		openapi3filter.RegisterBodyDecoder(media, asText)
 	}
 }

@@ -105,7 +105,6 @@ type fixture struct {
 	id     int64 // of the tallied measurement of wafer K-1
 	odd    int64 // of the measurement of wafer "a/b ü?#%41", which no run sheet names
 	spec   db.Spec
-	log    *strings.Builder
 }
 
 const oddName = "a/b ü?#%41"

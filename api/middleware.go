@@ -1,6 +1,7 @@
 package api
 
 import (
+	"context"
 	"fmt"
 	"log/slog"
 	"net/http"
@@ -32,23 +33,20 @@ type headWriter struct{ http.ResponseWriter }
 
 func (h headWriter) Write(b []byte) (int, error) { return len(b), nil }
 
-const headKey = "head"
+type headKey struct{}
 
-// headAsGet answers HEAD as GET without a body.
-func headAsGet(next echo.HandlerFunc) echo.HandlerFunc {
-	return func(c echo.Context) error {
-		if r := c.Request(); r.Method == http.MethodHead {
-			get := r.Clone(r.Context())
-			get.Method = http.MethodGet
-			c.SetRequest(get)
-			c.Set(headKey, true)
-			c.Response().Writer = headWriter{c.Response().Writer}
-		}
-		return next(c)
+// headAsGet makes a GET of HEAD whose answer's body is dropped, so that every
+// address that answers GET answers HEAD. It comes before routing.
+func headAsGet(w http.ResponseWriter, r *http.Request) (http.ResponseWriter, *http.Request) {
+	if r.Method != http.MethodHead {
+		return w, r
 	}
+	get := r.WithContext(context.WithValue(r.Context(), headKey{}, true))
+	get.Method = http.MethodGet
+	return headWriter{w}, get
 }
 
-func isHead(c echo.Context) bool { return c.Get(headKey) != nil }
+func isHead(c echo.Context) bool { return c.Request().Context().Value(headKey{}) != nil }
 
 // identify gives every request an id: its own when that is well formed.
 func (s *Server) identify(next echo.HandlerFunc) echo.HandlerFunc {

@@ -55,8 +55,12 @@ func operation(r route, schemas *schemas) object {
 	if len(params) > 0 {
 		op["parameters"] = params
 	}
-	if r.body != "" {
-		op["requestBody"] = object{"required": true, "description": "a specification document", "content": object{r.body: object{"schema": object{"type": "string"}}}}
+	if r.body != nil {
+		content := object{}
+		for _, media := range r.body {
+			content[media] = object{"schema": object{"type": "string"}}
+		}
+		op["requestBody"] = object{"required": true, "description": "a specification document", "content": content}
 	}
 	return op
 }
@@ -95,7 +99,7 @@ func (r *route) problems() []int {
 	if strings.Contains(r.path, "{") || strings.HasSuffix(r.path, ".png") {
 		out = append(out, http.StatusNotFound)
 	}
-	if r.body != "" {
+	if r.body != nil {
 		out = append(out, http.StatusForbidden, http.StatusConflict, http.StatusRequestEntityTooLarge, http.StatusUnsupportedMediaType)
 	}
 	return out

@@ -16,7 +16,7 @@ type route struct {
 	id      string // operationId
 	summary string
 	params  []parameter
-	body    string // media type of the request body; "" = none
+	body    []string // media types of the request body; nil = none
 	handle  echo.HandlerFunc
 	answers []answer // of success
 	tagged  bool     // has an ETag: 304 is possible
@@ -49,7 +49,7 @@ func get[P any](path, id, summary string, h func(echo.Context, P) error, answers
 // post makes a POST route that takes a YAML document.
 func post[P any](path, id, summary string, h func(echo.Context, P) error, answers ...answer) route {
 	r := get(path, id, summary, h, answers...)
-	r.method, r.body = http.MethodPost, mediaYAML
+	r.method, r.body = http.MethodPost, documentMedia
 	return r
 }
 

@@ -65,8 +65,6 @@ func New(c Config) (*Server, error) {
 	s.echo = echo.New()
 	s.echo.HideBanner, s.echo.HidePort = true, true
 	s.echo.HTTPErrorHandler = s.answerError
-	// HEAD is routed as GET and its body dropped, so that every address has it.
-	s.echo.Pre(headAsGet)
 	s.echo.Use(s.identify, s.logAccess, secure, s.press.middleware, s.catch, s.guard)
 	if err := s.registerRoutes(); err != nil {
 		return nil, fmt.Errorf("api: %w", err)
@@ -76,7 +74,9 @@ func New(c Config) (*Server, error) {
 }
 
 // ServeHTTP implements http.Handler.
-func (s *Server) ServeHTTP(w http.ResponseWriter, r *http.Request) { s.echo.ServeHTTP(w, r) }
+func (s *Server) ServeHTTP(w http.ResponseWriter, r *http.Request) {
+	s.echo.ServeHTTP(headAsGet(w, r))
+}
 
 func (s *Server) registerRoutes() error {
 	routes := s.routes()

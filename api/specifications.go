@@ -180,7 +180,7 @@ func (s *Server) putSpec(c echo.Context, parsed *binning.Spec, document []byte) 
 
 // documentMedia are the types a YAML document is sent as. They are not among
 // those that a page of another site may send unasked.
-var documentMedia = []string{"application/yaml", "text/yaml", "application/x-yaml", "text/x-yaml"}
+var documentMedia = []string{mediaYAML, "text/yaml", "application/x-yaml", "text/x-yaml"}
 
 // readDocument reads a YAML body.
 func readDocument(c echo.Context) ([]byte, error) {
