@@ -155,26 +155,22 @@ func (t *table) row(b []byte, start int) (int, error) {
 	delimiter, point := t.delimiter, t.point
 	for f := range t.fields {
 		fd := &t.fields[f]
-		if fd.use == useWafer && !t.spread { // nearly always the same wafer
-			if e := i + len(t.wafer); len(t.wafer) > 0 && e < len(b) && b[e] == delimiter && f != last && string(b[i:e]) == string(t.wafer) {
+		after := delimiter
+		if f == last {
+			after = '\n'
+		}
+		if fd.use == useWafer && !t.slow { // nearly always the same wafer
+			if e := i + len(t.wafer); len(t.wafer) > 0 && e < len(b) && b[e] == after && string(b[i:e]) == string(t.wafer) {
 				i = e + 1
 				continue
 			}
-		}
-		if fd.use < useX || t.slow {
-			next, err := t.slowField(b, start, i, f)
-			if err != nil {
-				return 0, err
-			}
-			i = next
-			continue
 		}
 		j := i
 		neg := b[j] == '-'
 		if neg {
 			j++
 		}
-		if j+8 > len(b) {
+		if fd.use < useX || t.slow || j+8 >= len(b) {
 			next, err := t.slowField(b, start, i, f)
 			if err != nil {
 				return 0, err
@@ -186,21 +182,19 @@ func (t *table) row(b []byte, start int) (int, error) {
 		digits := word ^ zeros
 		// The high bit of every byte that is not a digit.
 		stops := ((digits&^highs + 0x7676767676767676) | digits) & highs
-		p := bits.TrailingZeros64(stops) &^ 7
-		size, frac := p, 0 // bits of digits
+		p := bits.TrailingZeros64(stops) &^ 7 // bits before the first of them; 64 = none
+		size, frac := p, 0                    // bits of digits, digits after the point
 		if byte(word>>(p&63)) == point {
 			q := bits.TrailingZeros64(stops&(stops-1)) &^ 7
-			frac = (q-p)>>3 - 1
 			whole := uint64(1)<<p - 1
 			digits = digits&whole | digits>>8&^whole
-			size = q - 8
-			p = q
+			frac, size, p = (q-p)>>3-1, q-8, q
 		}
 		end, width := byte(word>>(p&63)), p>>3+1
-		if end == '\r' && f == last && j+width < len(b) && b[j+width] == '\n' {
+		if end == '\r' && f == last && b[j+width] == '\n' {
 			end, width = '\n', width+1
 		}
-		if p == 64 || size == 0 || (end != delimiter || f == last) && (end != '\n' || f != last) {
+		if p == 64 || size == 0 || end != after {
 			next, err := t.slowField(b, start, i, f)
 			if err != nil {
 				return 0, err
@@ -216,23 +210,30 @@ func (t *table) row(b []byte, start int) (int, error) {
 		if neg {
 			v = -v
 		}
-		switch {
-		case fd.use == useValue:
+		if fd.use == useValue {
 			if c := &t.cols[fd.col]; frac == c.frac {
 				c.k[n] = v
-			} else if !c.put(n, decimal{m: digits, exp: -frac, neg: neg}, nil, point) {
-				return 0, t.fault(start, i, fd, "the number is out of range", "")
+			} else {
+				c.put(n, decimal{m: digits, exp: -frac, neg: neg}, nil, point)
 			}
-		case frac != 0 || v > math.MaxInt16 || v < math.MinInt16:
+		} else if !t.setCoordinate(fd.use, v, frac) {
 			return 0, t.badCoordinate(start, i, fd, b[i:j+p>>3])
-		case fd.use == useX:
-			t.x[n] = int16(v)
-		default:
-			t.y[n] = int16(v)
 		}
 		i = j + width
 	}
 	return i, nil
+}
+
+func (t *table) setCoordinate(u use, v int32, frac int) bool {
+	switch {
+	case frac != 0 || v != int32(int16(v)):
+		return false
+	case u == useX:
+		t.x[t.n] = int16(v)
+	default:
+		t.y[t.n] = int16(v)
+	}
+	return true
 }
 
 func (t *table) fault(start, at int, fd *field, problem, remedy string) *analytics.Fault {
