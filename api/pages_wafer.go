@@ -183,7 +183,7 @@ func specOptions(specs []db.Spec, chosen *db.Spec, kind string, fits func(*db.Sp
 		if fits(sp) {
 			first = append(first, o)
 		} else {
-			o.Label += " (not for this product)"
+			o.Label += " (other product)"
 			rest = append(rest, o)
 		}
 	}

@@ -44,7 +44,7 @@ func tooltip() charts.GlobalOpts {
 
 // margins leaves room for axis titles.
 func margins(left, right string) charts.GlobalOpts {
-	return charts.WithGridOpts(opts.Grid{Left: left, Right: right, Top: "34", Bottom: "52"})
+	return charts.WithGridOpts(opts.Grid{Left: left, Right: right, Top: "54", Bottom: "52"})
 }
 
 // valueAxes are two numeric axes with titles and units; lo and hi bound x, NaN
@@ -60,7 +60,7 @@ func valueAxes(x, y string, xLow, xHigh float64, yFromZero bool) charts.GlobalOp
 		charts.WithXAxisOpts(opts.XAxis{Type: "value", Name: x, NameLocation: "middle", NameGap: 30,
 			Min: bound(xLow), Max: bound(xHigh), Scale: opts.Bool(true),
 			SplitLine: &opts.SplitLine{Show: opts.Bool(false)}})(bc)
-		charts.WithYAxisOpts(opts.YAxis{Type: "value", Name: y, NameLocation: "end", Scale: opts.Bool(!yFromZero),
+		charts.WithYAxisOpts(opts.YAxis{Type: "value", Name: y, NameLocation: "end", NameGap: 30, Scale: opts.Bool(!yFromZero),
 			SplitNumber: 4})(bc)
 	}
 }
