@@ -64,15 +64,15 @@ func HistogramChart(p Plotted) *Chart {
 	return c
 }
 
-// widened gives a range that shows the target too, unless it lies over three
-// times the range away: the dies come first.
+// widened gives a range that shows the target too, with room for its name, unless
+// it lies over three times the range away: the dies come first.
 func widened(low, high, target float64) (float64, float64) {
 	span := high - low
-	if target < low && low-target < 3*span {
-		low = target - span/10
+	if room := target - span/8; room < low && low-target < 3*span {
+		low = room
 	}
-	if target > high && target-high < 3*span {
-		high = target + span/10
+	if room := target + span/8; room > high && target-high < 3*span {
+		high = room
 	}
 	return low, high
 }

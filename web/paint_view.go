@@ -21,8 +21,9 @@ type view struct {
 // viewMargin is the room round the wafer, as a share of its diameter.
 const viewMargin = 0.03
 
-// gapFrom is the die size in pixels from which a line is left between dies.
-const gapFrom = 5
+// gapFrom is the die size in pixels, along its shorter side, from which a line is
+// left between dies.
+const gapFrom = 8
 
 func newView(l *wafermap.Layout, size int) *view {
 	v := &view{layout: l, size: size, pxPerMM: float64(size) / (l.WaferDiameterMM * (1 + 2*viewMargin)), flat: math.Inf(1)}
@@ -57,8 +58,8 @@ const noDie = math.MinInt32
 func (v *view) axis(pitch, centre float64, flip bool) []int {
 	out := make([]int, v.size)
 	end := 1.0
-	if d := pitch * v.pxPerMM; d >= gapFrom {
-		end = 0.5 - 1/d - 1e-9 // one pixel in a die's width is the line between dies
+	if min(v.layout.DiePitchXMM, v.layout.DiePitchYMM)*v.pxPerMM >= gapFrom {
+		end = 0.5 - 1/(pitch*v.pxPerMM) - 1e-9 // one pixel in a die's width is the line between dies
 	}
 	for i := range out {
 		mm := v.mm(i)

@@ -1,7 +1,7 @@
 // The wafer map: fetches grid and planes, draws them, follows pointer and keys.
 import { isDark } from './ground.js';
 import { decodeGrid, decodePlane } from './plane.js';
-import { axis, binCodes, binInks, paint, scaleInks, shade } from './raster.js';
+import { GAP_FROM, axis, binCodes, binInks, paint, scaleInks, shade } from './raster.js';
 import { View } from './view.js';
 import { drawCursor, drawLines, drawWafer } from './outline.js';
 import { drawLegend } from './legend.js';
@@ -150,8 +150,9 @@ class WaferMap {
     const palette = this.palette();
     const { layout } = this.data;
     const s = this.view.pxPerMM(side);
-    const columns = axis(side, side / 2 - this.view.cx * s, s, layout.pitch_x, layout.centre_x, layout.flip_x);
-    const rows = axis(side, side / 2 + this.view.cy * s, s, layout.pitch_y, layout.centre_y, !layout.flip_y);
+    const gap = Math.min(layout.pitch_x, layout.pitch_y) * s >= GAP_FROM;
+    const columns = axis(side, side / 2 - this.view.cx * s, s, layout.pitch_x, layout.centre_x, layout.flip_x, gap);
+    const rows = axis(side, side / 2 + this.view.cy * s, s, layout.pitch_y, layout.centre_y, !layout.flip_y, gap);
     const ctx = this.hidden.getContext('2d');
     if (this.image?.width !== side) this.image = ctx.createImageData(side, side);
     const scale = this.quantity?.scale === 'deviation' ? palette.deviation : palette.magnitude;

@@ -2,7 +2,7 @@
 // no drawing call per die. Nothing here touches the document.
 
 export const MISSING = 0xffff; // code of a die without a value
-export const GAP_FROM = 5; // die size in pixels from which a line is left between dies
+export const GAP_FROM = 8; // die size in pixels, along its shorter side, from which a line is left between dies
 const BETWEEN = -0x80000000;
 export const PATTERNS = ['', 'rise', 'fall', 'level', 'dots'];
 
@@ -53,12 +53,12 @@ export function shade(plane, low, high, steps) {
 }
 
 // axis gives the die coordinate under each of n pixels: pixel p lies at
-// (p + 0.5 − middle)/pxPerMM mm.
-export function axis(n, middle, pxPerMM, pitch, centre, flip) {
+// (p + 0.5 − middle)/pxPerMM mm. gap leaves a line between dies.
+export function axis(n, middle, pxPerMM, pitch, centre, flip, gap) {
   const out = new Int32Array(n);
   const size = pitch * pxPerMM;
   // One pixel in a die's width is the line, taken off its far side.
-  const end = size >= GAP_FROM ? 0.5 - 1 / size - 1e-9 : 1;
+  const end = gap ? 0.5 - 1 / size - 1e-9 : 1;
   for (let p = 0; p < n; p++) {
     const mm = (p + 0.5 - middle) / pxPerMM;
     const at = (flip ? -mm : mm) / pitch + centre;

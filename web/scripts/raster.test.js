@@ -25,15 +25,15 @@ test('a value at the top of the range is not beyond it', () => {
 
 test('an axis turns with the layout and leaves gaps between large dies', () => {
   // 3 dies of 1 mm over 30 pixels: 10 pixels a die, half a pixel off each side.
-  const right = axis(30, 15, 10, 1, 0, false);
+  const right = axis(30, 15, 10, 1, 0, false, true);
   assert.equal(right[1], -1);
   assert.equal(right[15], 0);
   assert.equal(right[28], 1);
-  const left = axis(30, 15, 10, 1, 0, true);
+  const left = axis(30, 15, 10, 1, 0, true, true);
   assert.equal(left[1], 1);
   assert.ok([...right].some((d) => d < -1000), 'no line between dies');
-  const small = axis(30, 15, 2, 1, 0, false);
-  assert.ok([...small].every((d) => d > -1000), 'small dies must touch');
+  const small = axis(30, 15, 2, 1, 0, false, false);
+  assert.ok([...small].every((d) => d > -1000), 'dies must touch where no line is asked for');
 });
 
 test('painting looks colours up and leaves the rest clear', () => {
