@@ -59,6 +59,10 @@ func TestWafersPageListsAndFilters(t *testing.T) {
 	if got := text(page(t, f, "/wafers?lot=none", 200).Find("#finding")); !strings.HasPrefix(got, "No wafer fits this filter") {
 		t.Errorf("finding of an empty filter %q", got)
 	}
+	w := do(f, request(http.MethodGet, "/wafers?q=k-1", ""))
+	if w.Code != 303 || w.Header().Get("Location") != "/wafers/K-1" {
+		t.Errorf("a search for a whole name: %d to %q", w.Code, w.Header().Get("Location"))
+	}
 	page(t, f, "/wafers?run=many", 400)
 	page(t, f, "/wafers?cursor=nonsense", 400)
 }

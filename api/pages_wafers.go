@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"math"
+	"net/http"
 	"net/url"
 	"strconv"
 	"strings"
@@ -27,6 +28,10 @@ func (s *Server) pageWafers(c echo.Context) error {
 	list, err := s.store.Wafers(ctx, f)
 	if err != nil {
 		return err
+	}
+	if only := (db.WaferFilter{Search: f.Search}); f == only && list.Total == 1 && strings.EqualFold(list.Rows[0].Wafer.Name, f.Search) {
+		// Whoever typed a wafer's whole name wants the wafer, not a list of one.
+		return c.Redirect(http.StatusSeeOther, "/wafers/"+url.PathEscape(list.Rows[0].Wafer.Name))
 	}
 	choices, err := s.store.FilterChoices(ctx)
 	if err != nil {
