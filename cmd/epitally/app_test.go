@@ -216,6 +216,26 @@ func TestDryRunSaysWhatAFileWouldGive(t *testing.T) {
 	}
 }
 
+func TestDryRunReadsByAProfile(t *testing.T) {
+	t.Parallel()
+	dir := t.TempDir()
+	profile, file := filepath.Join(dir, "p.yaml"), filepath.Join(dir, "odd.txt")
+	for path, text := range map[string]string{
+		profile: "profile: odd\nformat: delimited\nmatch: [\"*.txt\"]\ndelimiter: \";\"\nheader: {row: 3}\ncolumns: {x: X, y: Y}\n" +
+			"quantities:\n  - {quantity: forward_voltage_v, column: VF, unit: mV}\nconstants: {kind: probe}\n" +
+			"facts: {wafer: {label: W}, measured_at: {label: T}}\ntime: {layouts: [\"yyyy-MM-dd HH:mm\"], zone: UTC}\n",
+		file: "W;A-7\nT;2026-11-02 05:00\nX;Y;VF\n0;0;3101\n1;0;3099\n",
+	} {
+		if err := os.WriteFile(path, []byte(text), 0o644); err != nil {
+			t.Fatal(err)
+		}
+	}
+	out, _, err := runCommand(t, "load", "--dry-run", "--profile", profile, file)
+	if err != nil || !strings.Contains(out, "A-7") || !strings.Contains(out, "3.099 to 3.101") {
+		t.Errorf("%v: %s; want wafer A-7 from 3.099 to 3.101 V", err, out)
+	}
+}
+
 func TestLoadByHand(t *testing.T) {
 	t.Parallel()
 	c := testConfig(t)

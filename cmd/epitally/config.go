@@ -121,6 +121,9 @@ func (c *Config) resolve(f *pflag.FlagSet, args []string, env func(string) strin
 		}
 	}
 	f.VisitAll(func(fl *pflag.Flag) {
+		if _, list := fl.Value.(pflag.SliceValue); list {
+			return // of no setting, and setting a list again would add to it
+		}
 		value, inFlags := given[fl.Name]
 		if !inFlags {
 			value = env("EPITALLY_" + strings.ToUpper(strings.ReplaceAll(fl.Name, "-", "_")))
