@@ -12,30 +12,31 @@ import (
 	"github.com/klauspost/compress/zstd"
 )
 
+// plain undoes the compression of an answer; nil when that fails.
 func plain(t *testing.T, w *httptest.ResponseRecorder) []byte {
 	t.Helper()
 	var in io.Reader = w.Body
+	var err error
 	switch coding := w.Header().Get("Content-Encoding"); coding {
 	case "zstd":
-		d, err := zstd.NewReader(in)
-		if err != nil {
-			t.Fatal(err)
+		var d *zstd.Decoder
+		if d, err = zstd.NewReader(in); err == nil {
+			defer d.Close()
+			in = d
 		}
-		defer d.Close()
-		in = d
 	case "gzip":
-		d, err := gzip.NewReader(in)
-		if err != nil {
-			t.Fatal(err)
-		}
-		in = d
+		in, err = gzip.NewReader(in)
 	case "":
 	default:
-		t.Fatalf("Content-Encoding %q", coding)
+		err = fmt.Errorf("Content-Encoding %q", coding)
 	}
-	b, err := io.ReadAll(in)
+	var b []byte
+	if err == nil {
+		b, err = io.ReadAll(in)
+	}
 	if err != nil {
-		t.Fatal(err)
+		t.Error(err) // not Fatal: called from goroutines too
+		return nil
 	}
 	return b
 }

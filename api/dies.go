@@ -47,11 +47,7 @@ func (s *Server) listDies(c echo.Context, p diesParams) error {
 	if chooseFormat(c, p.Format, "csv", "json") == "csv" {
 		download(c, fmt.Sprintf("%s-%d.csv", m.Wafer, m.ID))
 		c.Response().Header().Set("Content-Type", mediaCSV)
-		w := bufio.NewWriterSize(c.Response(), 1<<16)
-		if err := s.store.WriteDiesCSV(ctx, w, m, p.Quantities...); err != nil {
-			return err
-		}
-		return w.Flush()
+		return s.store.WriteDiesCSV(ctx, c.Response(), m, p.Quantities...)
 	}
 	planes, err := s.store.Planes(ctx, m, p.Quantities...)
 	if err != nil {

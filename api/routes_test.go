@@ -6,6 +6,7 @@ import (
 	"net/http"
 	"net/url"
 	"strings"
+	"sync"
 	"testing"
 )
 
@@ -178,4 +179,56 @@ func TestWaferNamesMayHoldAnyPrintableCharacter(t *testing.T) {
 	if !strings.Contains(p.Detail, `"a/b"`) || !strings.Contains(p.Detail, "/api/v1/wafers?q=") {
 		t.Errorf("detail %q names neither the wafer nor what to do", p.Detail)
 	}
+}
+
+func TestTheDocumentSaysWhatEveryParameterIs(t *testing.T) {
+	t.Parallel()
+	f := setup(t)
+	seen := map[string]bool{}
+	for _, r := range f.routes() {
+		if r.summary == "" || seen[r.id] || len(r.answers) == 0 {
+			t.Errorf("%s %s: id %q, summary %q", r.method, r.path, r.id, r.summary)
+		}
+		seen[r.id] = true
+		inPath := 0
+		for _, p := range r.params {
+			if p.doc == "" || p.name == "" {
+				t.Errorf("%s: parameter %q is not described", r.id, p.name)
+			}
+			if p.in == "path" {
+				inPath++
+				if !strings.Contains(r.path, "{"+p.name+"}") {
+					t.Errorf("%s has no {%s}", r.path, p.name)
+				}
+			}
+		}
+		if inPath != strings.Count(r.path, "{") {
+			t.Errorf("%s: %d of its parameters are read", r.path, inPath)
+		}
+	}
+}
+
+// Encoders, parsed specifications and their tables are shared between requests.
+func TestManyReadersAtOnce(t *testing.T) {
+	t.Parallel()
+	f := setup(t)
+	one := fmt.Sprintf("/api/v1/measurements/%d", f.put(t, probeOf(t, "K-2", noon, square(60), f.layout)))
+	targets := []string{one + "/bins?specification=harbour-blue", one + "/tally?specification=harbour-blue", one + "/planes/" + dominant, one + "/dies"}
+	want := make([]string, len(targets))
+	for i, target := range targets {
+		want[i] = do(f, request("GET", target, "")).Body.String()
+	}
+	var wait sync.WaitGroup
+	for worker := range 8 {
+		wait.Go(func() {
+			for i := range 12 {
+				k := (worker + i) % len(targets)
+				w := do(f, request("GET", targets[k], "", "Accept-Encoding", []string{"zstd", "gzip", ""}[i%3]))
+				if got := string(plain(t, w)); got != want[k] {
+					t.Errorf("%s: %d bytes, alone %d", targets[k], len(got), len(want[k]))
+				}
+			}
+		})
+	}
+	wait.Wait()
 }
