@@ -139,7 +139,7 @@ func (s *Server) pageLoad(c echo.Context) error {
 	}
 	add("seen", web.Moment(src.SeenAt, s.zone))
 	if src.StoredAt != nil {
-		add("stored", web.Moment(*src.StoredAt, s.zone))
+		add(src.State, web.Moment(*src.StoredAt, s.zone)) // when it came to its end, stored or refused
 	}
 	add("size", web.Bytes(src.Bytes))
 	add("format", src.Format)

@@ -32,6 +32,7 @@ func TestWaferSentence(t *testing.T) {
 		{"no target", func(f *WaferFound) { f.Target = nan }, "has a median dominant wavelength of 455.8 nm and no target to hold it against;"},
 		{"no values", func(f *WaferFound) { f.Summary = &uniformity.Summary{Missing: 4, Median: nan} }, "where it sits cannot be told, since no die has a value of dominant wavelength;"},
 		{"no summary", func(f *WaferFound) { f.Summary = nil }, "where it sits cannot be told"},
+		{"no figures", func(f *WaferFound) { f.Quantity, f.Summary = quantity.Quantity{}, nil }, "where it sits cannot be told, since its figures are still being made;"},
 		{"no wavelength", func(f *WaferFound) { f.Quantity, f.Target, f.Summary = voltage, nan, at(3.1234) }, "has a median forward voltage of 3.12 V;"},
 		{"no spec", func(f *WaferFound) { f.Spec = "" }, "how much of it sells cannot be told, since no specification applies to it."},
 		{"no dies", func(f *WaferFound) { f.Denominator = 0 }, "under harbour-blue v3 cannot be told, since there are no dies to count."},

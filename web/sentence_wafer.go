@@ -55,6 +55,10 @@ func (f WaferFound) sayPosition(s *Sentence) {
 	q := f.Quantity
 	decimals := max(Decimals(q.Resolution)-1, 0)
 	label := lowerFirst(q.Label)
+	if q.Name == "" {
+		s.say(": where it sits cannot be told, since its figures are still being made")
+		return
+	}
 	if f.Summary == nil || f.Summary.N == 0 || math.IsNaN(f.Summary.Median) {
 		s.say(": where it sits cannot be told, since no die has a value of " + label)
 		return
