@@ -241,8 +241,8 @@ func (in *WaferInput) measurementOptions() []Option {
 	var out []Option
 	for _, m := range in.All {
 		label := m.Kind + ", " + Moment(m.MeasuredAt, in.Zone)
-		if m.Current {
-			label += " (current)"
+		if !m.Current {
+			label += ", older"
 		}
 		out = append(out, Option{strconv.FormatInt(m.ID, 10), label, m.ID == in.Measurement.ID})
 	}
