@@ -44,7 +44,7 @@ web/node_modules/.installed: web/package.json web/package-lock.json
 	npm ci --prefix web --silent --no-audit --no-fund
 	@touch $@
 
-web/dist/.built: web/node_modules/.installed $(wildcard web/scripts/*.js web/styles/*.css web/*.mjs)
+web/dist/.built: web/node_modules/.installed $(wildcard web/scripts/*.js web/scripts/*.mjs web/styles/*)
 	npm run build --prefix web --silent
 	@touch $@
 

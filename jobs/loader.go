@@ -85,6 +85,25 @@ func (l *Loader) Load(ctx context.Context, in Incoming) (src db.Source, err erro
 	return src, nil
 }
 
+// Profiles reads the stored reading profiles. One that an older version took and
+// this one does not is left out, and said in the log.
+func (l *Loader) Profiles(ctx context.Context) ([]reader.Profile, error) {
+	stored, err := l.store.Profiles(ctx)
+	if err != nil {
+		return nil, err
+	}
+	var parsed []reader.Profile
+	for _, p := range stored {
+		profile, err := reader.ParseProfile([]byte(p.Document))
+		if err != nil {
+			l.log.Error("a stored reading profile no longer parses", "profile", p.Name, "error", err)
+			continue
+		}
+		parsed = append(parsed, profile)
+	}
+	return parsed, nil
+}
+
 // readInto runs the three stages: read, derive, store. Each hands over one
 // measurement at a time, so that memory holds at most four of them.
 func (l *Loader) readInto(ctx context.Context, tx *db.Load, in Incoming) (reader.Result, error) {

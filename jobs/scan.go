@@ -73,7 +73,7 @@ func (s *Scanner) Scan(ctx context.Context) (ScanResult, error) {
 			s.Done(src, err, len(files))
 		}
 	}
-	profiles, err := s.profiles(ctx)
+	profiles, err := s.loaders[0].Profiles(ctx)
 	if err != nil {
 		return result, err
 	}
@@ -84,7 +84,7 @@ func (s *Scanner) Scan(ctx context.Context) (ScanResult, error) {
 		count(s.one(ctx, s.loaders[0], f, profiles))
 	}
 	if documents > 0 {
-		if profiles, err = s.profiles(ctx); err != nil {
+		if profiles, err = s.loaders[0].Profiles(ctx); err != nil {
 			return result, err
 		}
 	}
@@ -195,21 +195,4 @@ func (s *Scanner) refuse(ctx context.Context, src db.Source, f dropped, why erro
 		s.log.Error("refused, but not moved to rejected/", "source", f.name, "error", err)
 	}
 	return src, why
-}
-
-func (s *Scanner) profiles(ctx context.Context) ([]reader.Profile, error) {
-	stored, err := s.store.Profiles(ctx)
-	if err != nil {
-		return nil, err
-	}
-	var parsed []reader.Profile
-	for _, p := range stored {
-		profile, err := reader.ParseProfile([]byte(p.Document))
-		if err != nil {
-			s.log.Error("a stored reading profile no longer parses", "profile", p.Name, "error", err)
-			continue
-		}
-		parsed = append(parsed, profile)
-	}
-	return parsed, nil
 }

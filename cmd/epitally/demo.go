@@ -56,7 +56,7 @@ func growFiles(ctx context.Context, c *console, fab *simfab.Fab, dir string) err
 		return err
 	}
 	bar.Finish()
-	fmt.Fprintf(c.out, "The files are in %s (%.1f s).\n", dir, time.Since(start).Seconds())
+	fmt.Fprintf(c.out, "The files are in %s, and what they were grown from in %s (%.1f s).\n", dir, filepath.Join(dir, truthFile), time.Since(start).Seconds())
 	return nil
 }
 

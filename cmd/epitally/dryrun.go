@@ -12,6 +12,7 @@ import (
 	"epitally/analytics"
 	"epitally/analytics/binning"
 	"epitally/analytics/wafermap"
+	"epitally/jobs"
 	"epitally/jobs/reader"
 )
 
@@ -25,6 +26,8 @@ type dryFile struct {
 	Format string     `json:"format"`
 	Wafers []dryWafer `json:"wafers"`
 	Notes  []string   `json:"notices,omitempty"`
+
+	profile *reader.Profile // the file is one
 }
 
 type dryWafer struct {
@@ -46,15 +49,21 @@ type dryQuantity struct {
 // dryRun reads every file to its end and stores nothing. It ends with status 0
 // only when every file is readable.
 func dryRun(ctx context.Context, c *console, files []string, profiles []reader.Profile, in reader.Input, asJSON bool) error {
+	jobs.DocumentsFirst(files)
+	forced := onlyName(profiles)
 	results := make([]dryFile, 0, len(files))
 	unreadable := 0
 	for _, path := range files {
-		r := dryRead(ctx, path, profiles, in)
+		in.Profiles, in.ProfileName = profiles, forced
+		r := dryRead(ctx, path, in)
 		if ctx.Err() != nil {
 			return ctx.Err()
 		}
 		if !r.OK {
 			unreadable++
+		}
+		if r.profile != nil { // the files after it may need it, as they would when loaded
+			profiles = append(profiles, *r.profile)
 		}
 		results = append(results, r)
 		if !asJSON {
@@ -76,7 +85,7 @@ func dryRun(ctx context.Context, c *console, files []string, profiles []reader.P
 	return nil
 }
 
-func dryRead(ctx context.Context, path string, profiles []reader.Profile, in reader.Input) dryFile {
+func dryRead(ctx context.Context, path string, in reader.Input) dryFile {
 	r := dryFile{File: path, Wafers: []dryWafer{}}
 	file, err := os.Open(path)
 	if err != nil {
@@ -84,14 +93,14 @@ func dryRead(ctx context.Context, path string, profiles []reader.Profile, in rea
 		return r
 	}
 	defer file.Close()
-	in.Name, in.R, in.Profiles, in.ProfileName = path, file, profiles, onlyName(profiles)
+	in.Name, in.R = path, file
 	result, err := reader.Read(ctx, in, reader.Sink{
 		Measurement: func(m *reader.Measurement) error {
 			r.Wafers = append(r.Wafers, dryWaferOf(m))
 			return nil
 		},
 		RunSheet: func([]reader.RunSheetRow) error { return nil },
-		Document: checkDocument,
+		Document: r.checkDocument,
 	})
 	r.Format, r.Notes = result.Format, result.Notices
 	if err == nil {
@@ -110,14 +119,17 @@ func dryRead(ctx context.Context, path string, profiles []reader.Profile, in rea
 }
 
 // checkDocument holds a document to the same rules as loading does.
-func checkDocument(kind, _, text string) (err error) {
+func (r *dryFile) checkDocument(kind, _, text string) (err error) {
 	switch kind {
 	case "catalogue":
 		_, err = reader.ParseCatalogue([]byte(text))
 	case "specification":
 		_, err = binning.Parse([]byte(text))
 	case "profile":
-		_, err = reader.ParseProfile([]byte(text))
+		var p reader.Profile
+		if p, err = reader.ParseProfile([]byte(text)); err == nil {
+			r.profile = &p
+		}
 	}
 	return err
 }

@@ -123,7 +123,10 @@ func loadFiles(ctx context.Context, c *console, config Config, zone *time.Locati
 	defer store.Close()
 	jobs.DocumentsFirst(files)
 	loader := jobs.NewLoader(loaderConfig(config, store, log, zone))
-	run := &manualLoad{console: c, store: store, loader: loader, profiles: profiles, start: time.Now()}
+	run := &manualLoad{console: c, store: store, loader: loader, given: profiles, start: time.Now()}
+	if err := run.readProfiles(ctx); err != nil {
+		return err
+	}
 	run.bar = newBar(c.err, totalBytes(files))
 	for _, path := range files {
 		if err := run.one(ctx, path); err != nil {
@@ -156,13 +159,21 @@ type manualLoad struct {
 	console  *console
 	store    *db.Store
 	loader   *jobs.Loader
-	profiles []reader.Profile
+	given    []reader.Profile // on the command line
+	profiles []reader.Profile // given, then stored
 	bar      *progressbar.ProgressBar
 	start    time.Time
 
 	stored, again, refused int
 	wafers                 int
 	dies, bytes            int64
+}
+
+// readProfiles is done anew after a profile among the files was stored.
+func (m *manualLoad) readProfiles(ctx context.Context) error {
+	stored, err := m.loader.Profiles(ctx)
+	m.profiles = append(append([]reader.Profile(nil), m.given...), stored...)
+	return err
 }
 
 func (m *manualLoad) one(ctx context.Context, path string) error {
@@ -175,6 +186,9 @@ func (m *manualLoad) one(ctx context.Context, path string) error {
 		m.bytes += src.Bytes
 		for _, n := range src.Notices {
 			m.say("%s: note: %s", path, n)
+		}
+		if src.Format == "profile" {
+			return m.readProfiles(ctx)
 		}
 	case ctx.Err() != nil:
 		m.bar.Exit()
@@ -207,7 +221,7 @@ func (m *manualLoad) loadPath(ctx context.Context, path string) (db.Source, erro
 		return db.Source{Offset: -1, SeenAt: time.Now()}, err
 	}
 	counted := progressbar.NewReader(file, m.bar)
-	return m.loader.Load(ctx, jobs.Incoming{Name: path, R: &counted, Bytes: info.Size(), Profiles: m.profiles, Profile: onlyName(m.profiles)})
+	return m.loader.Load(ctx, jobs.Incoming{Name: path, R: &counted, Bytes: info.Size(), Profiles: m.profiles, Profile: onlyName(m.given)})
 }
 
 // onlyName forces the profile when exactly one was named on the command line.
