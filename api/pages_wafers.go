@@ -45,7 +45,7 @@ func (s *Server) pageWafers(c echo.Context) error {
 	narrowed.Cursor, narrowed.Limit = "", 0
 	page := web.WafersPage{Total: list.Total, Fields: filterFields(f, choices), Filtered: narrowed != (db.WaferFilter{}),
 		Quantity: fmt.Sprintf("Small maps share one scale, ±%d\u202fnm about each wafer's own target: teal is short, ochre long, and what lies beyond takes the end shade. Without a target they show the value on a scale of their own, dark low and bright high.", web.SmallMapReach)}
-	page.Empty = list.Total == 0 && !page.Filtered
+	page.Empty, page.Drop = list.Total == 0 && !page.Filtered, s.drop
 	page.Base = s.base(c, web.Base{Title: "Wafers", Section: "wafers", Search: f.Search})
 	page.Finding = web.WafersSentence(web.WafersFound{Total: list.Total, ByState: states, Filtered: page.Filtered, AllURL: "/wafers",
 		Link: func(state string) string { g := narrowed; g.State = state; return wafersURL(g) }, Basis: "All wafers that the filter selects, " + page.MadeAt})

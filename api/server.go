@@ -35,6 +35,7 @@ type Server struct {
 	now   func() time.Time
 	zone  *time.Location
 	newID func() string
+	drop  string
 	press *compressor
 	specs specCache
 	// document is the OpenAPI document, and documentTag its strong ETag.
@@ -48,7 +49,7 @@ func New(c Config) (*Server, error) {
 	if c.Store == nil || c.Pages == nil {
 		return nil, errors.New("api: Store and Pages are needed")
 	}
-	s := &Server{store: c.Store, pages: c.Pages, log: c.Logger, now: c.Now, zone: c.Zone, newID: c.RequestID,
+	s := &Server{store: c.Store, pages: c.Pages, log: c.Logger, now: c.Now, zone: c.Zone, newID: c.RequestID, drop: c.DropFolder,
 		press: newCompressor(), crossOrigin: http.NewCrossOriginProtection()}
 	if s.log == nil {
 		s.log = slog.New(slog.DiscardHandler)

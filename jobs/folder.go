@@ -159,6 +159,10 @@ func rankOf(r io.Reader) int {
 // read. It is left where it is and looked at again.
 var errChanged = errors.New("changed while it was read; left to settle and to be read again")
 
+// errGone says that a file was there when the folder was listed and is no more:
+// a person took it away, or another server filed it.
+var errGone = errors.New("gone since the folder was listed")
+
 // unchanged compares a file with what it was when it was opened.
 func (f *Folder) unchanged(name string, before fs.FileInfo) error {
 	after, err := f.root.Stat(name)

@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"io/fs"
 	"log/slog"
 	"os"
 	"sync"
@@ -130,13 +131,16 @@ func (s *Scanner) one(ctx context.Context, l *Loader, f dropped, profiles []read
 			log.Warn("stored, but not moved to loaded/", "error", err)
 		}
 		return src, nil
-	case errors.Is(err, errChanged), transient(err):
+	case errors.Is(err, errChanged), errors.Is(err, errGone), transient(err):
 		log.Info("left for the next scan", "reason", err)
 		src.State = db.SourceWaiting
 		return src, err
 	case errors.Is(err, analytics.ErrDuplicate) && s.storedAs(ctx, src):
-		_, err := s.folder.fileAway(f.name, loadedFolder)
-		return src, err
+		if _, err := s.folder.fileAway(f.name, loadedFolder); err != nil {
+			src.State = db.SourceWaiting
+			return src, err
+		}
+		return src, nil
 	}
 	return s.refuse(ctx, src, f, err)
 }
@@ -154,6 +158,9 @@ func (s *Scanner) read(ctx context.Context, l *Loader, f dropped, profiles []rea
 		return src, fmt.Errorf("%s is not a file (%s); put plain files into the drop folder: %w", f.name, f.info.Mode().Type(), analytics.ErrInvalid)
 	}
 	file, err := s.folder.root.Open(f.name)
+	if _, there := s.folder.root.Lstat(f.name); errors.Is(there, fs.ErrNotExist) {
+		return src, fmt.Errorf("%s: %w", f.name, errGone)
+	}
 	if err != nil {
 		return src, fmt.Errorf("%s cannot be opened: %w; check its permissions, and that a link stays inside the drop folder: %w", f.name, err, analytics.ErrInvalid)
 	}

@@ -344,3 +344,20 @@ func TestUnsettledFilesWait(t *testing.T) {
 		t.Fatalf("dated ahead, second look: %+v", r)
 	}
 }
+
+func TestAFileTakenAwayIsNoRefusal(t *testing.T) {
+	t.Parallel()
+	b := setup(t)
+	b.drop(t, "gone.csv", readings("T-0001", 5))
+	listed, _, err := b.folder.list()
+	if err != nil || len(listed) != 1 {
+		t.Fatalf("%v, %d files", err, len(listed))
+	}
+	if err := os.Remove(filepath.Join(b.dir, "gone.csv")); err != nil {
+		t.Fatal(err)
+	}
+	src, err := b.scanner.one(context.Background(), b.scanner.loaders[0], listed[0], nil)
+	if !errors.Is(err, errGone) || src.State == db.SourceRefused {
+		t.Errorf("%v, state %q; want errGone and no refusal", err, src.State)
+	}
+}

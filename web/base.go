@@ -102,12 +102,12 @@ func (p Plate) Class() string {
 	}
 }
 
-// Moment writes a time to the minute in the fab's zone: 2026-11-30 23:05 CET.
+// Moment writes a time to the minute in the fab's zone: 2026-11-30 23:05 +08:00.
 func Moment(t time.Time, zone *time.Location) string {
 	if t.IsZero() {
 		return noValue
 	}
-	return t.In(zone).Format("2006-01-02 15:04 MST")
+	return t.In(zone).Format("2006-01-02 15:04 -07:00")
 }
 
 func templateFuncs() template.FuncMap {

@@ -13,6 +13,7 @@ type WafersPage struct {
 	OlderURL string // "" at the end
 	FirstURL string // "" on the first page
 	Empty    bool   // nothing has ever been loaded
+	Drop     string // the drop folder, said on the empty page; "" = not known
 }
 
 // FilterField is one selector of the filter form.

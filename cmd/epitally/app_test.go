@@ -30,8 +30,9 @@ func testConfig(t *testing.T) Config {
 	return c
 }
 
-// startApp runs a server until the test ends.
-func startApp(t *testing.T, c Config) *App {
+// startApp runs a server until the test ends. before is called when it is made
+// but does not scan yet.
+func startApp(t *testing.T, c Config, before func(*App)) *App {
 	t.Helper()
 	ctx, stop := context.WithCancel(context.Background())
 	app, err := New(ctx, c, slog.New(slog.DiscardHandler))
@@ -39,6 +40,7 @@ func startApp(t *testing.T, c Config) *App {
 		stop()
 		t.Fatal(err)
 	}
+	before(app)
 	ended := make(chan error, 1)
 	go func() { ended <- app.Run(ctx) }()
 	t.Cleanup(func() {
@@ -75,15 +77,15 @@ func page(t *testing.T, url string, wantStatus int) *goquery.Document {
 func TestTheMainJob(t *testing.T) {
 	t.Parallel()
 	c := testConfig(t)
-	app := startApp(t, c)
 	ctx := context.Background()
-	if err := writeFab(ctx, simfab.New(simfab.Config{Seed: 3, Wafers: 8}), c.Drop, func(int, int) {}); err != nil {
-		t.Fatal(err)
-	}
-	result, err := app.Scanner.Scan(ctx)
-	if err != nil || result.Refused != 0 || result.Stored == 0 {
-		t.Fatalf("scan: %v, %+v", err, result)
-	}
+	app := startApp(t, c, func(app *App) {
+		if err := writeFab(ctx, simfab.New(simfab.Config{Seed: 3, Wafers: 8}), c.Drop, func(int, int) {}); err != nil {
+			t.Error(err)
+		}
+		if result, err := app.Scanner.Scan(ctx); err != nil || result.Refused != 0 || result.Left != 0 || result.Stored == 0 {
+			t.Errorf("scan: %v, %+v", err, result)
+		}
+	})
 	list, err := app.Store.Wafers(ctx, db.WaferFilter{Kind: "probe"})
 	if err != nil || list.Total < 6 {
 		t.Fatalf("%v: %d wafers with a probe measurement", err, list.Total)
