@@ -1,6 +1,7 @@
 package api
 
 import (
+	"context"
 	"fmt"
 	"regexp"
 	"strconv"
@@ -14,8 +15,9 @@ import (
 	"epitally/web"
 )
 
-// loadsCounted is how many of the newest sources the first sentence looks at.
-const loadsCounted = 500
+// reasonsCompared is how many of the newest refusals the first sentence looks
+// through for a cause they share.
+const reasonsCompared = 500
 
 var sourceStates = []string{db.SourceWaiting, db.SourceReading, db.SourceStored, db.SourceRefused}
 
@@ -26,12 +28,12 @@ func (s *Server) pageLoads(c echo.Context) error {
 	if err != nil {
 		return err
 	}
-	newest, _, err := s.store.Sources(ctx, "", loadsCounted, "")
+	found, err := s.lastHour(ctx)
 	if err != nil {
 		return err
 	}
-	page := web.LoadsPage{Base: s.base(c, web.Base{Title: "Loads", Section: "loads"}), Empty: len(newest) == 0}
-	found := s.lastHour(newest)
+	found.Ever = found.Ever || len(rows) > 0
+	page := web.LoadsPage{Base: s.base(c, web.Base{Title: "Loads", Section: "loads"}), Empty: !found.Ever}
 	found.Basis = "Sources seen in the hour before " + page.MadeAt
 	page.Finding = web.LoadsSentence(found)
 	page.States = append(page.States, web.Fact{Name: "all", Href: hrefUnless(state == "", "/loads")})
@@ -57,38 +59,39 @@ func hrefUnless(here bool, href string) string {
 	return href
 }
 
-// lastHour counts what the newest sources came to in the hour before now.
-func (s *Server) lastHour(newest []db.Source) web.LoadsFound {
-	f := web.LoadsFound{Ever: len(newest) > 0, RefusedURL: listURL("/loads", "state", db.SourceRefused), StoredURL: listURL("/loads", "state", db.SourceStored)}
+// lastHour counts what became of the files seen in the hour before now, and
+// finds the cause that most refusals share.
+func (s *Server) lastHour(ctx context.Context) (f web.LoadsFound, err error) {
 	since := s.now().Add(-time.Hour)
+	counts, err := s.store.SourceCounts(ctx, since)
+	if err != nil {
+		return f, err
+	}
+	refused, _, err := s.store.Sources(ctx, db.SourceRefused, reasonsCompared, "")
+	if err != nil {
+		return f, err
+	}
+	f = web.LoadsFound{Stored: counts[db.SourceStored], Refused: counts[db.SourceRefused], Ever: len(counts) > 0,
+		RefusedURL: listURL("/loads", "state", db.SourceRefused), StoredURL: listURL("/loads", "state", db.SourceStored)}
 	reasons := map[string]int{}
-	inHour := 0
-	for i := range newest {
-		src := &newest[i]
+	for i := range refused {
+		src := &refused[i]
 		if src.SeenAt.Before(since) {
 			continue
 		}
-		inHour++
-		switch src.State {
-		case db.SourceStored:
-			f.Stored++
-		case db.SourceRefused:
-			f.Refused++
-			cause := sameButNames.ReplaceAllString(reasonOf(src), "…")
-			reasons[cause]++
-			if n := reasons[cause]; n > f.Sharing {
-				f.SharedCause, f.Sharing = cause, n
-				if n == 1 {
-					f.SharedCause = reasonOf(src)
-				}
+		cause := sameButNames.ReplaceAllString(reasonOf(src), "…")
+		reasons[cause]++
+		if n := reasons[cause]; n > f.Sharing {
+			f.SharedCause, f.Sharing = cause, n
+			if n == 1 {
+				f.SharedCause = reasonOf(src)
 			}
 		}
 	}
-	f.More = inHour == loadsCounted
 	if f.Sharing == 1 && f.Refused > 1 {
 		f.SharedCause = ""
 	}
-	return f
+	return f, nil
 }
 
 // sameButNames finds what differs between reasons of one cause: quoted text and

@@ -1,7 +1,6 @@
 package api
 
 import (
-	"context"
 	"fmt"
 	"math"
 	"net/http"
@@ -15,9 +14,6 @@ import (
 	"epitally/db"
 	"epitally/web"
 )
-
-// waferStates are the states that the list's first sentence counts.
-var waferStates = []string{"on colour", "long", "short", "mixed", "unmeasured"}
 
 func (s *Server) pageWafers(c echo.Context) error {
 	ctx := c.Request().Context()
@@ -37,7 +33,7 @@ func (s *Server) pageWafers(c echo.Context) error {
 	if err != nil {
 		return err
 	}
-	states, err := s.stateCounts(ctx, f, list.Total)
+	states, err := s.store.StateCounts(ctx, f)
 	if err != nil {
 		return err
 	}
@@ -83,27 +79,6 @@ func wafersURL(f db.WaferFilter) string {
 	}
 	return listURL("/wafers", "q", f.Search, "lot", f.Lot, "reactor", f.Reactor, "run", run, "recipe", f.Recipe, "product", f.Product,
 		"state", f.State, "kind", f.Kind, "spec", f.Spec, "cursor", f.Cursor)
-}
-
-// stateCounts tells how the wafers the filter selects stand.
-func (s *Server) stateCounts(ctx context.Context, f db.WaferFilter, total int) (map[string]int, error) {
-	if f.State != "" {
-		return map[string]int{f.State: total}, nil
-	}
-	counts := make(map[string]int, len(waferStates))
-	if total == 0 {
-		return counts, nil
-	}
-	f.Cursor, f.Limit = "", 1
-	for _, state := range waferStates {
-		f.State = state
-		page, err := s.store.Wafers(ctx, f)
-		if err != nil {
-			return nil, err
-		}
-		counts[state] = page.Total
-	}
-	return counts, nil
 }
 
 func filterFields(f db.WaferFilter, c *db.FilterChoices) []web.FilterField {

@@ -119,6 +119,9 @@ func TestTheWafersListFiltersAndTurnsPages(t *testing.T) {
 			t.Errorf("%s: %v, total %d, %d rows; want %d", name, err, page.Total, len(page.Rows), c.want)
 		}
 	}
+	if counts, err := s.StateCounts(ctx, db.WaferFilter{Lot: "LOT-0"}); err != nil || counts["on colour"] != 2 || counts["long"] != 1 || len(counts) != 2 {
+		t.Errorf("states of LOT-0: %v, %v; want wafers 0 and 6 on colour, 3 long", counts, err)
+	}
 	seen := map[string]bool{}
 	var last *time.Time
 	for cursor, pages := "", 0; ; pages++ {
@@ -240,6 +243,12 @@ func TestRefusedSourcesAreListed(t *testing.T) {
 	refused, _, err := s.Sources(ctx, db.SourceRefused, 10, "")
 	if err != nil || len(refused) != 1 {
 		t.Errorf("%v, %d refused; want 1", err, len(refused))
+	}
+	if counts, err := s.SourceCounts(ctx, noon.Add(-time.Second)); err != nil || counts[db.SourceStored] != 1 || counts[db.SourceRefused] != 1 {
+		t.Errorf("counts %v, %v; want one each", counts, err)
+	}
+	if counts, err := s.SourceCounts(ctx, noon.Add(time.Second)); err != nil || len(counts) != 0 {
+		t.Errorf("counts after %v, %v; want none", counts, err)
 	}
 	first, next, err := s.Sources(ctx, "", 1, "")
 	if err != nil || len(first) != 1 || next == "" {

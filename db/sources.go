@@ -6,6 +6,7 @@ import (
 	"encoding/hex"
 	"fmt"
 	"strconv"
+	"time"
 	"unicode/utf8"
 
 	"github.com/jackc/pgx/v5"
@@ -96,6 +97,27 @@ func (s *Store) SourceByHash(ctx context.Context, sha256 string) (src *Source, e
 func (s *Store) Source(ctx context.Context, id int64) (src *Source, err error) {
 	defer wrap(&err, "source %d", id)
 	return s.oneSource(ctx, ` WHERE id = $1`, id)
+}
+
+// SourceCounts counts the sources seen since a time by their state.
+func (s *Store) SourceCounts(ctx context.Context, since time.Time) (counts map[string]int, err error) {
+	defer wrap(&err, "count sources since %s", since.UTC().Format(time.RFC3339))
+	return countsBy(s.pool.Query(ctx, `SELECT state, count(*) FROM source WHERE seen_at >= $1 GROUP BY state`, since))
+}
+
+// countsBy collects rows of a word and its count.
+func countsBy(rows pgx.Rows, err error) (map[string]int, error) {
+	if err != nil {
+		return nil, err
+	}
+	counts := map[string]int{}
+	var word string
+	var n int
+	_, err = pgx.ForEachRow(rows, []any{&word, &n}, func() error {
+		counts[word] = n
+		return nil
+	})
+	return counts, err
 }
 
 // Sources lists newest first. state "" = all. Cursor and limit as in Wafers.

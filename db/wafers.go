@@ -219,6 +219,15 @@ func (s *Store) Wafers(ctx context.Context, f WaferFilter) (page *WaferPage, err
 	return page, s.fillTargets(ctx, page.Rows)
 }
 
+// StateCounts counts the wafers that a filter selects by their colour state;
+// wafers without a target count under "". Cursor and Limit do not matter.
+func (s *Store) StateCounts(ctx context.Context, f WaferFilter) (counts map[string]int, err error) {
+	defer wrap(&err, "count wafers by state")
+	q := newListQuery(f)
+	join := q.joinMeasurement(f.Kind)
+	return countsBy(s.pool.Query(ctx, `SELECT coalesce(m.state, 'unmeasured'), count(*)`+fromWafer+join+q.clause()+` GROUP BY 1`, q.args...))
+}
+
 // rowsSQL joins the one summary and the one tally that a line shows.
 func (q *listQuery) rowsSQL(join, spec string) string {
 	sql := strings.Replace(selectWafer, fromWafer, `,

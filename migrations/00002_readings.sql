@@ -26,6 +26,7 @@ CREATE TABLE source (
 -- The very same bytes are stored once, whatever they are called and whoever loads them.
 CREATE UNIQUE INDEX source_once ON source (sha256) WHERE state = 'stored';
 CREATE INDEX source_state ON source (state, id DESC);
+CREATE INDEX source_seen ON source (seen_at); -- what became of the last hour's files
 
 CREATE TABLE die_grid (
 	id   bigint GENERATED ALWAYS AS IDENTITY PRIMARY KEY,

@@ -39,7 +39,6 @@ type LoadPage struct {
 type LoadsFound struct {
 	Refused     int    // sources refused in the last hour
 	Stored      int    // sources stored in the last hour
-	More        bool   // there were more in the hour than could be counted
 	SharedCause string // the reason that most of the refused share; "" = none
 	Sharing     int    // how many share it
 	Ever        bool   // something was loaded once
@@ -51,10 +50,6 @@ type LoadsFound struct {
 // LoadsSentence tells how loading went in the last hour.
 func LoadsSentence(f LoadsFound) Sentence {
 	s := Sentence{Basis: f.Basis}
-	atLeast := ""
-	if f.More {
-		atLeast = "at least "
-	}
 	switch {
 	case !f.Ever:
 		s.stress("Nothing has been loaded yet", "")
@@ -66,11 +61,11 @@ func LoadsSentence(f LoadsFound) Sentence {
 		s.say(" are below.")
 		return s
 	case f.Refused == 0:
-		s.stress(atLeast+Plural(f.Stored, "file", "files"), f.StoredURL)
+		s.stress(Plural(f.Stored, "file", "files"), f.StoredURL)
 		s.say(was(f.Stored) + "stored in the last hour, and none refused.")
 		return s
 	}
-	s.stress(atLeast+Plural(f.Refused, "file", "files"), f.RefusedURL)
+	s.stress(Plural(f.Refused, "file", "files"), f.RefusedURL)
 	s.say(was(f.Refused) + "refused in the last hour")
 	switch {
 	case f.Sharing > 1 && f.Sharing == f.Refused:

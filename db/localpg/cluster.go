@@ -65,13 +65,14 @@ type Cluster struct {
 // Epitally left running there, starts the server and returns when it answers.
 // Another Epitally at work in the folder is analytics.ErrConflict; no server
 // programs is analytics.ErrNotFound.
-func Start(ctx context.Context, o Options) (c *Cluster, err error) {
+func Start(ctx context.Context, o Options) (_ *Cluster, err error) {
 	defer func() {
 		if err != nil {
 			err = fmt.Errorf("private PostgreSQL: %w", err)
 		}
 	}()
-	if c, err = newCluster(o); err != nil {
+	c, err := newCluster(o)
+	if err != nil {
 		return nil, err
 	}
 	defer func() {
