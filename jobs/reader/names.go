@@ -48,7 +48,7 @@ func checkKind(kind string) error {
 
 // Moments outside these years are mistakes of a clock or a layout.
 const (
-	firstYear = 1990
+	firstYear = 1980
 	lastYear  = 2199
 )
 

@@ -182,7 +182,7 @@ func TestOwnCSVRefusesWithPlace(t *testing.T) {
 		{"no wafer", strings.Replace(head, "# wafer: W-1\n", "", 1) + "0,0,3\n", "line 4, column 1: wafer: no `# wafer:` line stands above the header row; add `# wafer: W-0001`"},
 		{"no zone", strings.Replace(head, "+01:00", "", 1) + "0,0,3\n", "line 4, column 15: measured at: the time \"2026-11-02T05:00:00\" has no zone; add the zone: 2026-11-05T06:00:00Z or 2026-11-05T07:00:00+01:00"},
 		{"no time", strings.Replace(head, "2026-11-02T05:00:00+01:00", "Tuesday", 1) + "0,0,3\n", "line 4, column 15: measured at: \"Tuesday\" is not a time; write it as 2026-11-05T06:00:00Z or 2026-11-05T07:00:00+01:00"},
-		{"year", strings.Replace(head, "2026", "0026", 1) + "0,0,3\n", "line 4, column 15: measured at: the time \"0026-11-02T05:00:00+01:00\" is in the year 26; check the station's clock; years from 1990 to 2199 are read"},
+		{"year", strings.Replace(head, "2026", "0026", 1) + "0,0,3\n", "line 4, column 15: measured at: the time \"0026-11-02T05:00:00+01:00\" is in the year 26; check the station's clock; years from 1980 to 2199 are read"},
 		{"slash", strings.Replace(head, "W-1", "../W", 1) + "0,0,3\n", "line 2, column 9: wafer: the wafer name \"../W\" holds a slash or is only dots; a wafer name is 1 to 128 printable characters without / and \\"},
 		{"kind", strings.Replace(head, "probe", "Probe 1", 1) + "0,0,3\n", "line 3, column 8: kind: the measurement kind \"Probe 1\" is not a name; use pl, probe or another name of lower-case letters, digits and underscores, a letter first"},
 		{"unit", ownHead + "# drive current: 20 furlong\nx,y,fwhm_nm\n", "line 5, column 17: drive current: unknown unit \"furlong\": for a value kept in \"mA\" use one of a, ma, na, pa, ua, µa; write it like 20 mA"},
