@@ -20,6 +20,7 @@ type Binner struct {
 	turn    int        // which table gives way next
 	columns []column   // of the call at work
 	block   block
+	odd     []int // of countThree
 }
 
 // NewBinner makes a Binner.
@@ -225,6 +226,10 @@ func (b *Binner) run(dst []uint16, counts []int, include []bool) error {
 		return err
 	}
 	clear(counts)
+	if dst == nil && include == nil && b.threeLanes() {
+		b.countThree(counts)
+		return nil
+	}
 	untested := len(b.spec.cells) - 1
 	for from := 0; from < dies; from += blockDies {
 		to := min(from+blockDies, dies)

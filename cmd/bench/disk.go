@@ -15,7 +15,7 @@ func (b *bench) measureDisk(ctx context.Context) error {
 		return err
 	}
 	ours, err := b.sizeOf(ctx, `SELECT sum(pg_total_relation_size(c.oid)) FROM pg_class c JOIN pg_namespace n ON n.oid = c.relnamespace
-		WHERE c.relkind IN ('r', 'm') AND n.nspname NOT IN ('pg_catalog', 'information_schema', 'pg_toast') AND c.relname <> 'die_row'`)
+		WHERE c.relkind IN ('r', 'm') AND n.nspname NOT IN ('pg_catalog', 'information_schema', 'pg_toast') AND c.relname NOT IN ('die_row', 'by_sql')`)
 	if err != nil {
 		return err
 	}
@@ -30,9 +30,18 @@ func (b *bench) measureDisk(ctx context.Context) error {
 }
 
 func (b *bench) sizeOf(ctx context.Context, sql string) (float64, error) {
+	out, err := b.rows(ctx, sql)
+	if err != nil {
+		return 0, err
+	}
+	return strconv.ParseFloat(strings.TrimSpace(out), 64)
+}
+
+// rows gives what a query answers, fields parted by |.
+func (b *bench) rows(ctx context.Context, sql string) (string, error) {
 	out, err := exec.CommandContext(ctx, "psql", "--no-psqlrc", "--tuples-only", "--no-align", b.url, "--command", sql).Output()
 	if err != nil {
-		return 0, fmt.Errorf("psql: %w", err)
+		return "", fmt.Errorf("psql: %w", err)
 	}
-	return strconv.ParseFloat(strings.TrimSpace(string(out)), 64)
+	return string(out), nil
 }

@@ -90,7 +90,10 @@ func syncDir(path string) error {
 // folder that every account may pass.
 func (c *Cluster) dress(cmd *exec.Cmd) {
 	cmd.Dir = "/"
-	cmd.Env = []string{"LC_ALL=C", "TZ=UTC", "PATH=" + c.programs.Dir + ":/usr/bin:/bin"}
+	cmd.Env = []string{"LC_ALL=C", "TZ=UTC", "PATH=" + c.programs.Dir + ":/usr/bin:/bin",
+		// glibc would give the memory of every plane back to the system and fault it
+		// in again for the next one; 32 MB a connection may stay.
+		"MALLOC_MMAP_THRESHOLD_=33554432", "MALLOC_TRIM_THRESHOLD_=33554432"}
 	cmd.SysProcAttr = attributes(c.account, c.blocked)
 }
 

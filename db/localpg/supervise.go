@@ -104,7 +104,7 @@ func (c *Cluster) settings() []string {
 		"unix_socket_permissions=0700",
 		"cluster_name=epitally",
 		"max_connections=100",
-		"shared_buffers=64MB",
+		"shared_buffers=128MB",
 		"work_mem=16MB",
 		"wal_compression=lz4",
 		"max_wal_size=1GB",
