@@ -1,10 +1,13 @@
 package localpg
 
 import (
+	"cmp"
 	"context"
 	"errors"
 	"fmt"
+	"io/fs"
 	"log/slog"
+	"maps"
 	"net/url"
 	"os"
 	"path/filepath"
@@ -12,14 +15,19 @@ import (
 	"time"
 
 	"github.com/jackc/pgx/v5"
+	"github.com/jackc/pgx/v5/pgconn"
 
 	"epitally/analytics"
 )
 
 const (
-	superuser    = "epitally"
-	socketPrefix = "epitally-socket-"
-	socketFile   = ".s.PGSQL.5432"
+	superuser       = "epitally"
+	defaultDatabase = "epitally"
+	serverName      = "server" // the cluster itself, in the data folder
+	pidName         = "postmaster.pid"
+	lockName        = "lock"
+	socketPrefix    = "epitally-socket-"
+	socketFile      = ".s.PGSQL.5432"
 	// maxSocketPath is what the shortest sun_path of the supported systems holds,
 	// the closing zero not counted: 104 on macOS, 108 on Linux.
 	maxSocketPath = 103
@@ -27,6 +35,8 @@ const (
 	// giveUpAfter bounds the attempts of Start when the server ends as it starts:
 	// time enough for the last processes of a killed server to notice.
 	giveUpAfter = 5 * time.Second
+	// duplicateDatabase is the SQLSTATE of a name that is taken.
+	duplicateDatabase = "42P04"
 )
 
 // Options say where the cluster lies and how it runs.
@@ -37,6 +47,9 @@ type Options struct {
 	Logger  *slog.Logger // nil = silent
 	// Database is made when missing; "" = "epitally".
 	Database string
+	// Settings are PostgreSQL's, by name, over those this package gives; where the
+	// server listens stays. nil = none.
+	Settings map[string]string
 	// Throwaway trades durability for speed; for tests only.
 	Throwaway bool
 }
@@ -49,6 +62,7 @@ type Cluster struct {
 	account                   account
 	blocked                   bool // the account needs help to pass the folders above dir
 	throwaway                 bool
+	extra                     map[string]string // Options.Settings
 	log                       *slog.Logger
 	lock                      *os.File
 
@@ -63,15 +77,15 @@ type Cluster struct {
 
 // Start makes the cluster in o.DataDir when there is none, ends what a killed
 // Epitally left running there, starts the server and returns when it answers.
-// Another Epitally at work in the folder is analytics.ErrConflict; no server
-// programs is analytics.ErrNotFound.
+// Another Epitally at work in the folder is ErrInUse; no server programs is
+// analytics.ErrNotFound.
 func Start(ctx context.Context, o Options) (_ *Cluster, err error) {
 	defer func() {
 		if err != nil {
 			err = fmt.Errorf("private PostgreSQL: %w", err)
 		}
 	}()
-	c, err := newCluster(o)
+	c, err := newCluster(ctx, o)
 	if err != nil {
 		return nil, err
 	}
@@ -88,7 +102,7 @@ func Start(ctx context.Context, o Options) (_ *Cluster, err error) {
 	}
 	go c.supervise()
 	if err = c.awaitReady(ctx); err == nil {
-		err = c.ensureDatabase(ctx, o.Database)
+		err = c.EnsureDatabase(ctx, cmp.Or(o.Database, defaultDatabase))
 	}
 	if err != nil {
 		c.Stop(context.WithoutCancel(ctx))
@@ -98,8 +112,8 @@ func Start(ctx context.Context, o Options) (_ *Cluster, err error) {
 }
 
 // newCluster finds programs and account, makes the folders and takes the lock.
-func newCluster(o Options) (*Cluster, error) {
-	c := &Cluster{throwaway: o.Throwaway, log: o.Logger, stop: make(chan struct{}), done: make(chan struct{})}
+func newCluster(ctx context.Context, o Options) (*Cluster, error) {
+	c := &Cluster{throwaway: o.Throwaway, extra: maps.Clone(o.Settings), log: o.Logger, stop: make(chan struct{}), done: make(chan struct{})}
 	if c.log == nil {
 		c.log = slog.New(slog.DiscardHandler)
 	}
@@ -110,16 +124,9 @@ func newCluster(o Options) (*Cluster, error) {
 	if c.account, err = serverAccount(); err != nil {
 		return nil, err
 	}
-	if c.dir, err = filepath.Abs(o.DataDir); err != nil {
+	if err := c.makeDataDir(o.DataDir); err != nil {
 		return nil, err
 	}
-	if err := c.account.makeDir(c.dir); err != nil {
-		return nil, err
-	}
-	if c.dir, err = filepath.EvalSymlinks(c.dir); err != nil {
-		return nil, err
-	}
-	c.serverDir = filepath.Join(c.dir, "server")
 	if folder := c.account.blockedAt(c.dir); folder != "" {
 		if c.blocked = true; passCapability() == 0 {
 			return nil, fmt.Errorf("the account %s, which the server programs run as, may not pass through %s: "+
@@ -127,7 +134,7 @@ func newCluster(o Options) (*Cluster, error) {
 				c.account.name, folder, folder, analytics.ErrUnavailable)
 		}
 	}
-	if c.lock, err = lock(filepath.Join(c.dir, "lock"), c.dir); err != nil {
+	if c.lock, err = lock(ctx, filepath.Join(c.dir, lockName), c.dir); err != nil {
 		return nil, err
 	}
 	if err := c.makeSocketDir(); err != nil {
@@ -135,6 +142,28 @@ func newCluster(o Options) (*Cluster, error) {
 		return nil, err
 	}
 	return c, nil
+}
+
+// makeDataDir makes the folder and finds its real path.
+func (c *Cluster) makeDataDir(dir string) (err error) {
+	if dir == "" {
+		return fmt.Errorf("no data folder is named: name one with --data: %w", analytics.ErrInvalid)
+	}
+	if dir, err = filepath.Abs(dir); err == nil {
+		err = os.MkdirAll(dir, 0o700)
+	}
+	if err == nil {
+		dir, err = filepath.EvalSymlinks(dir)
+	}
+	if err == nil {
+		err = c.account.makeDir(dir)
+	}
+	if errors.Is(err, fs.ErrPermission) {
+		return fmt.Errorf("data folder %s must belong to this account (%w): start Epitally as the folder's owner or as root, "+
+			"or choose another folder with --data: %w", dir, err, analytics.ErrUnavailable)
+	}
+	c.dir, c.serverDir = dir, filepath.Join(dir, serverName)
+	return err
 }
 
 // makeSocketDir puts the socket beside the cluster, or, where that path is too
@@ -199,10 +228,8 @@ func (c *Cluster) awaitReady(ctx context.Context) error {
 	}
 }
 
-func (c *Cluster) ensureDatabase(ctx context.Context, name string) error {
-	if name == "" {
-		name = "epitally"
-	}
+// EnsureDatabase makes a database of that name when there is none.
+func (c *Cluster) EnsureDatabase(ctx context.Context, name string) error {
 	conn, err := pgx.Connect(ctx, c.URL("postgres"))
 	if err != nil {
 		return err
@@ -212,6 +239,10 @@ func (c *Cluster) ensureDatabase(ctx context.Context, name string) error {
 	err = conn.QueryRow(ctx, "SELECT 1 FROM pg_database WHERE datname = $1", name).Scan(&one)
 	if errors.Is(err, pgx.ErrNoRows) {
 		_, err = conn.Exec(ctx, "CREATE DATABASE "+pgx.Identifier{name}.Sanitize())
+		var refused *pgconn.PgError
+		if errors.As(err, &refused) && refused.Code == duplicateDatabase {
+			err = nil // another process was first
+		}
 	}
 	return err
 }

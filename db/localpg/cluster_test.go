@@ -131,7 +131,8 @@ func TestStartMakesReusesAndStops(t *testing.T) {
 		t.Errorf("ready in %s", took)
 	}
 	execute(t, c.URL("epitally"), "INSERT INTO kept VALUES (1)")
-	for setting, want := range map[string]string{"listen_addresses": "", "fsync": "on", "synchronous_commit": "on", "data_checksums": "on", "server_encoding": "UTF8"} {
+	for setting, want := range map[string]string{"listen_addresses": "", "fsync": "on", "synchronous_commit": "on", "data_checksums": "on", "server_encoding": "UTF8",
+		"autovacuum": "on", "jit": "off", "wal_compression": "lz4", "default_toast_compression": "lz4"} {
 		conn, err := pgx.Connect(t.Context(), c.URL("epitally"))
 		if err != nil {
 			t.Fatal(err)
@@ -152,7 +153,7 @@ func TestASecondOneOnTheFolderIsRefused(t *testing.T) {
 	dir := t.TempDir()
 	start(t, dir)
 	_, err := Start(t.Context(), Options{DataDir: dir, Throwaway: true})
-	if !errors.Is(err, analytics.ErrConflict) || !strings.Contains(err.Error(), dir) || !strings.Contains(err.Error(), strconv.Itoa(os.Getpid())) {
+	if !errors.Is(err, ErrInUse) || !errors.Is(err, analytics.ErrConflict) || !strings.Contains(err.Error(), dir) || !strings.Contains(err.Error(), strconv.Itoa(os.Getpid())) {
 		t.Fatalf("got %v", err)
 	}
 }
@@ -253,10 +254,15 @@ func TestAPidFileOfAnotherProcessIsDefused(t *testing.T) {
 	t.Parallel()
 	dir := t.TempDir()
 	c := start(t, dir)
-	path := filepath.Join(dir, "server", "postmaster.pid")
-	text, err := os.ReadFile(path)
-	if err != nil {
-		t.Fatal(err)
+	// What a killed server leaves: its number, in the folder and beside the socket.
+	paths := []string{filepath.Join(dir, "server", "postmaster.pid"), filepath.Join(dir, "socket", socketFile+".lock")}
+	var texts []string
+	for _, path := range paths {
+		text, err := os.ReadFile(path)
+		if err != nil {
+			t.Fatal(err)
+		}
+		texts = append(texts, string(text))
 	}
 	if err := c.Stop(t.Context()); err != nil {
 		t.Fatal(err)
@@ -269,13 +275,15 @@ func TestAPidFileOfAnotherProcessIsDefused(t *testing.T) {
 		t.Fatal(err)
 	}
 	t.Cleanup(func() { other.Process.Kill(); other.Wait() })
-	_, rest, _ := strings.Cut(string(text), "\n")
-	if err := os.WriteFile(path, []byte(strconv.Itoa(other.Process.Pid)+"\n"+rest), 0o600); err != nil {
-		t.Fatal(err)
-	}
-	if c.account.switched {
-		if err := os.Chown(path, int(c.account.uid), int(c.account.gid)); err != nil {
+	for i, path := range paths {
+		_, rest, _ := strings.Cut(texts[i], "\n")
+		if err := os.WriteFile(path, []byte(strconv.Itoa(other.Process.Pid)+"\n"+rest), 0o600); err != nil {
 			t.Fatal(err)
+		}
+		if c.account.switched {
+			if err := os.Chown(path, int(c.account.uid), int(c.account.gid)); err != nil {
+				t.Fatal(err)
+			}
 		}
 	}
 	again := start(t, dir)

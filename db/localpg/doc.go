@@ -16,6 +16,7 @@
 //
 //	Start: lock → (initdb) → end a server left over → start → answers → Cluster
 //	the server dies: start again after a wait that doubles from 50 ms to 5 s
+//	Attach: a second program uses the cluster while the first runs it
 //	Stop: fast shutdown, within the context given; then immediate shutdown
 //	the process is killed: on Linux the kernel asks the server to stop; what is
 //	left of it is ended at the next Start

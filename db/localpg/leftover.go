@@ -12,6 +12,8 @@ import (
 	"syscall"
 	"time"
 
+	"github.com/jackc/pgx/v5/pgconn"
+
 	"epitally/analytics"
 )
 
@@ -52,9 +54,23 @@ func readPidFile(path string) (*pidFile, error) {
 // endLeftOver ends a server that an earlier, killed process left running in this
 // folder, so that the one started next is this process's own child with this
 // binary's settings. The lock is held: nobody else manages it. A pid file whose
-// number now belongs to some other process is defused.
+// number now belongs to some other process is defused, and what a killed server
+// leaves of its socket is cleared away.
 func (c *Cluster) endLeftOver(ctx context.Context) error {
-	path := filepath.Join(c.serverDir, "postmaster.pid")
+	if err := c.endServer(ctx); err != nil {
+		return err
+	}
+	// The socket's lock file names a process too, and no server runs now.
+	for _, name := range []string{socketFile, socketFile + ".lock"} {
+		if err := os.Remove(filepath.Join(c.socketDir, name)); err != nil && !errors.Is(err, fs.ErrNotExist) {
+			return err
+		}
+	}
+	return nil
+}
+
+func (c *Cluster) endServer(ctx context.Context) error {
+	path := filepath.Join(c.serverDir, pidName)
 	f, err := readPidFile(path)
 	if err != nil || f == nil {
 		return err
@@ -67,7 +83,7 @@ func (c *Cluster) endLeftOver(ctx context.Context) error {
 	}
 	runs, known := runsIn(f.pid, c.serverDir)
 	if !known {
-		runs = f.socketDir != "" && c.answers(ctx, f.socketDir) == nil
+		runs = f.socketDir != "" && c.listens(ctx, f.socketDir)
 	}
 	if !runs {
 		// The number was given to another process since. PostgreSQL would take that
@@ -93,6 +109,14 @@ func (c *Cluster) endLeftOver(ctx context.Context) error {
 		return ctx.Err()
 	}
 	return fmt.Errorf("the database server left in %s (process %d) does not end: end it by hand: %w", c.dir, f.pid, analytics.ErrConflict)
+}
+
+// listens reports whether there is a server at a socket, even one that refuses
+// connections because it still recovers.
+func (c *Cluster) listens(ctx context.Context, socketDir string) bool {
+	err := c.answers(ctx, socketDir)
+	var refusal *pgconn.PgError
+	return err == nil || errors.As(err, &refusal)
 }
 
 // gone waits until process pid, which need not be a child, has ended.

@@ -3,10 +3,11 @@ package localpg
 import (
 	"context"
 	"fmt"
-	"os"
+	"maps"
 	"os/exec"
-	"path/filepath"
 	"runtime"
+	"slices"
+	"sync"
 	"syscall"
 	"time"
 )
@@ -17,12 +18,14 @@ const (
 	longWait  = 5 * time.Second
 	// steadyAfter is how long a server must have run for the wait to begin anew.
 	steadyAfter = time.Minute
-	maxLogBytes = 8 << 20
 )
 
 // supervise keeps a server running until Stop.
 func (c *Cluster) supervise() {
 	defer close(c.done)
+	ctx, cancel := context.WithCancel(context.Background())
+	defer cancel()
+	go func() { <-c.stop; cancel() }() // it returns only after a Stop
 	// The kernel sends its signal when the thread that started the server ends,
 	// so this goroutine keeps that thread for as long as the server runs.
 	runtime.LockOSThread()
@@ -52,7 +55,7 @@ func (c *Cluster) supervise() {
 		}
 		wait = min(2*wait, longWait)
 		// Its process number may have been given away meanwhile.
-		if err := c.endLeftOver(context.Background()); err != nil {
+		if err := c.endLeftOver(ctx); err != nil {
 			c.log.Error("the database server cannot be started again yet", "error", err)
 		}
 	}
@@ -87,7 +90,12 @@ func (c *Cluster) runOnce() error {
 	if err != nil {
 		return fmt.Errorf("start %s: %w", cmd.Path, err)
 	}
+	ended := make(chan struct{})
+	var watch sync.WaitGroup
+	watch.Go(func() { c.watchLog(ended) })
 	err = cmd.Wait()
+	close(ended)
+	watch.Wait()
 	c.mu.Lock()
 	c.process = nil
 	c.mu.Unlock()
@@ -98,48 +106,37 @@ func (c *Cluster) runOnce() error {
 // programs; a commit is durable.
 func (c *Cluster) settings() []string {
 	s := []string{
-		"listen_addresses=",
-		"port=5432", // only names the socket
-		"unix_socket_directories=" + c.socketDir,
-		"unix_socket_permissions=0700",
-		"cluster_name=epitally",
 		"max_connections=100",
 		"shared_buffers=128MB",
 		"work_mem=16MB",
 		"wal_compression=lz4",
+		"default_toast_compression=lz4",
 		"max_wal_size=1GB",
 		"checkpoint_timeout=15min",
-		"random_page_cost=1.1", // data folders lie on solid-state disks
-		"jit=off",              // compiling takes longer than any query here
+		"autovacuum=on",
+		"max_logical_replication_workers=0", // one process less; nothing replicates
+		"random_page_cost=1.1",              // data folders lie on solid-state disks
+		"jit=off",                           // compiling takes longer than any query here
 		"timezone=UTC",
 		"log_timezone=UTC",
 		"log_min_messages=warning",
 		"log_line_prefix=%m [%p] ",
 	}
 	if c.throwaway {
-		return append(s, "fsync=off", "synchronous_commit=off", "full_page_writes=off")
+		s = append(s, "fsync=off", "synchronous_commit=off", "full_page_writes=off")
+	} else {
+		s = append(s, "fsync=on", "synchronous_commit=on", "full_page_writes=on")
 	}
-	return append(s, "fsync=on", "synchronous_commit=on", "full_page_writes=on")
-}
-
-func (c *Cluster) logPath() string { return filepath.Join(c.dir, "postgres.log") }
-
-// openLog appends to the server's log, which begins anew when it has grown large.
-func (c *Cluster) openLog() (*os.File, error) {
-	if info, err := os.Stat(c.logPath()); err == nil && info.Size() > maxLogBytes {
-		if err := os.Rename(c.logPath(), c.logPath()+".1"); err != nil {
-			return nil, err
-		}
+	// Of two values for one name, PostgreSQL takes the later.
+	for _, name := range slices.Sorted(maps.Keys(c.extra)) {
+		s = append(s, name+"="+c.extra[name])
 	}
-	return os.OpenFile(c.logPath(), os.O_CREATE|os.O_WRONLY|os.O_APPEND, 0o600)
-}
-
-func (c *Cluster) logTail() string {
-	text, err := os.ReadFile(c.logPath())
-	if err != nil {
-		return err.Error()
-	}
-	return lastLines(string(text))
+	return append(s,
+		"listen_addresses=",
+		"port=5432", // only names the socket
+		"unix_socket_directories="+c.socketDir,
+		"unix_socket_permissions=0700",
+		"cluster_name=epitally")
 }
 
 // Stop asks the server for a fast shutdown, and for an immediate one when ctx
