@@ -1,7 +1,8 @@
 package reader
 
 import (
-	"fmt"
+	"math"
+	"strconv"
 
 	"epitally/analytics/wafermap"
 )
@@ -18,22 +19,19 @@ func (r *stdfReader) geometry(f *fields) {
 	units, flat := f.u1(0), f.u1(' ')
 	cx, cy := f.i2(noCoordinate), f.i2(noCoordinate)
 	posX, posY := f.u1(' '), f.u1(' ')
+	if r.wcr != nil {
+		r.notice("the file states the wafer's geometry several times (WCR): the first counts")
+		return
+	}
 	l := &wafermap.Layout{Assumed: true}
 	const longest = 500 // mm, of a wafer
-	for _, v := range []struct {
-		what  string
-		value float32
-		to    *float64
-	}{{"wafer diameter", size, &l.WaferDiameterMM}, {"die width", width, &l.DiePitchXMM}, {"die height", height, &l.DiePitchYMM}} {
-		if !(v.value > 0) {
-			continue
-		}
-		mm := roundedMM(v.value, mmPer[units])
-		if mm > 0.01 && mm <= longest {
-			*v.to = mm
-		} else {
-			r.notice("the %s of the WCR record (%g in unit %d) is not one of a wafer: passed over", v.what, v.value, units)
-		}
+	l.WaferDiameterMM = r.length("wafer diameter", size, units, longest)
+	if l.WaferDiameterMM > 0 {
+		l.DiePitchXMM = r.length("die width", width, units, l.WaferDiameterMM)
+		l.DiePitchYMM = r.length("die height", height, units, l.WaferDiameterMM)
+	} else {
+		l.DiePitchXMM = r.length("die width", width, units, longest)
+		l.DiePitchYMM = r.length("die height", height, units, longest)
 	}
 	if angle, ok := flatAngles[flat]; ok {
 		l.Mark, l.MarkAngleDeg = "flat", angle
@@ -43,28 +41,94 @@ func (r *stdfReader) geometry(f *fields) {
 	if cx != noCoordinate && cy != noCoordinate {
 		l.CentreX, l.CentreY = float64(cx), float64(cy)
 	}
-	if *l == (wafermap.Layout{Assumed: true}) {
-		return
+	if r.p != nil {
+		r.p.place.applyLayout(l)
 	}
-	if r.base.layout != nil { // what the profile states stands
+	if *l == (wafermap.Layout{Assumed: true}) {
 		return
 	}
 	if r.res.Wafers > 0 {
 		r.notice("the wafer geometry (WCR record at byte %d) stands after the first wafers, which do not have it", r.rec.offset)
 	}
-	r.base.layout = l
+	r.wcr = l
+}
+
+// length converts a length of the WCR; 0 = not stated, or nonsense, of which
+// notice is given.
+func (r *stdfReader) length(what string, v float32, units uint8, longest float64) float64 {
+	if v == 0 || math.IsNaN(float64(v)) {
+		return 0
+	}
+	const shortest = 0.01 // mm
+	if mm := roundedMM(v, mmPer[units]); mm > shortest && mm <= longest {
+		return mm
+	}
+	r.notice("the %s of the WCR record (%g in unit %d) is not one of a wafer: passed over", what, v, units)
+	return 0
 }
 
 // roundedMM converts a binary32 length to mm by its shortest decimal, so that
-// 0.4392 cm is 4.392 mm and not 4.39200013876.
+// 0.4392 cm is 4.392 mm and not 4.39200013876, to a nanometre.
 func roundedMM(v float32, mm float64) float64 {
-	var shortest float64
-	if _, err := fmt.Sscan(fmt.Sprint(v), &shortest); err != nil {
+	shortest, err := strconv.ParseFloat(strconv.FormatFloat(float64(v), 'g', -1, 32), 64)
+	if err != nil {
 		return 0
 	}
-	const decimals = 1e6 // a nanometre
-	if x := shortest * mm; x < 1e9 {
-		return float64(int64(x*decimals+0.5)) / decimals
+	const perMM = 1e6
+	return math.Round(shortest*mm*perMM) / perMM
+}
+
+// applyLayout follows apply: axes turn and the centre moves with the dies. Dies
+// that are swapped run along the other axis, of which the file's words for
+// left, right, up and down say nothing.
+func (p *placement) applyLayout(l *wafermap.Layout) {
+	turned := map[string]string{"left": "right", "right": "left", "up": "down", "down": "up"}
+	if p.swap {
+		l.XAxis, l.YAxis = "", ""
+		l.CentreX, l.CentreY = l.CentreY, l.CentreX
 	}
-	return shortest * mm
+	stated := l.CentreX != 0 || l.CentreY != 0
+	if p.negateX {
+		l.XAxis, l.CentreX = turned[l.XAxis], 0-l.CentreX
+	}
+	if p.negateY {
+		l.YAxis, l.CentreY = turned[l.YAxis], 0-l.CentreY
+	}
+	if stated {
+		l.CentreX, l.CentreY = l.CentreX+float64(p.offsetX), l.CentreY+float64(p.offsetY)
+	}
+}
+
+// mergedLayout is what the profile states, completed from the WCR. Both may be
+// nil.
+func mergedLayout(profile, wcr *wafermap.Layout) *wafermap.Layout {
+	if profile == nil || wcr == nil {
+		if profile == nil && wcr != nil {
+			l := *wcr // belongs to the measurement
+			return &l
+		}
+		return profile
+	}
+	l := *profile
+	take := func(to *float64, from float64) {
+		if *to == 0 {
+			*to = from
+		}
+	}
+	take(&l.WaferDiameterMM, wcr.WaferDiameterMM)
+	take(&l.DiePitchXMM, wcr.DiePitchXMM)
+	take(&l.DiePitchYMM, wcr.DiePitchYMM)
+	if l.Mark == "" {
+		l.Mark, l.MarkAngleDeg = wcr.Mark, wcr.MarkAngleDeg
+	}
+	if l.XAxis == "" {
+		l.XAxis = wcr.XAxis
+	}
+	if l.YAxis == "" {
+		l.YAxis = wcr.YAxis
+	}
+	if l.CentreX == 0 && l.CentreY == 0 {
+		l.CentreX, l.CentreY = wcr.CentreX, wcr.CentreY
+	}
+	return &l
 }

@@ -6,6 +6,7 @@ import (
 	"io"
 	"math"
 	"strings"
+	"unicode"
 
 	"epitally/analytics"
 )
@@ -165,6 +166,18 @@ func (f *fields) raw() []byte {
 
 // text gives a C*n field. Testers write Latin-1 or ASCII.
 func (f *fields) text() string { return latin1(f.raw()) }
+
+// note gives a C*n field that is only shown: what does not print becomes a space.
+func (f *fields) note() string { return printable(f.text()) }
+
+func printable(text string) string {
+	return strings.TrimSpace(strings.Map(func(c rune) rune {
+		if unicode.IsPrint(c) {
+			return c
+		}
+		return ' '
+	}, text))
+}
 
 func latin1(b []byte) string {
 	var s strings.Builder

@@ -4,12 +4,13 @@ import (
 	"encoding/json"
 	"errors"
 	"fmt"
+	"io"
 	"math"
 	"os"
 	"path/filepath"
-	"slices"
 	"strings"
 	"testing"
+	"time"
 
 	"epitally/analytics"
 )
@@ -36,7 +37,11 @@ type expectedFile struct {
 			ID string `json:"WAFER_ID"`
 		} `json:"wrr"`
 	} `json:"wafers"`
-	DistinctTests int `json:"distinct_PTR_tests"`
+	Endian        string `json:"endian"`
+	Parts         int    `json:"parts"`
+	Outside       int    `json:"PTR_outside_a_part"`
+	Passed        int    `json:"parts_pass"`
+	DistinctTests int    `json:"distinct_PTR_tests"`
 	Tests         []struct {
 		Number int64    `json:"test_num"`
 		Name   string   `json:"name"`
@@ -135,6 +140,9 @@ func TestPublicSTDFFilesByField(t *testing.T) {
 			if have != expect {
 				t.Errorf("%s, wafer %d:\n %s\nwant\n %s", name, i, have, expect)
 			}
+			if n := count(planeOf(m, testerPass), 1); n != w.LastPass {
+				t.Errorf("%s, wafer %s: the tester passes %d by the last test, want %d", name, m.Wafer, n, w.LastPass)
+			}
 			if name == "extremes.std" { // its part passes in bin 21862
 				continue
 			}
@@ -144,63 +152,120 @@ func TestPublicSTDFFilesByField(t *testing.T) {
 			if n := count(planeOf(byFirst.measurements[i], "hard_bin"), 1); n != w.FirstPass {
 				t.Errorf("%s, wafer %s: %d pass by the first test, want %d", name, m.Wafer, n, w.FirstPass)
 			}
-			if err := m.Grid.Check(); err != nil {
-				t.Error(err)
+			checkMeasurement(t, m)
+		}
+	}
+}
+
+// TestPublicSTDFRecords checks the usable results of the tests that expected.json
+// lists, in every file, whether it makes a map or not. Its statistics are over
+// all parts, retests included: they are taken from each part before it closes.
+func TestPublicSTDFRecords(t *testing.T) {
+	t.Parallel()
+	const tolerance = 1e-8 // expected.json prints 9 digits
+	dir, files := sharedSTDF(t)
+	for name, want := range files {
+		got := walkSTDF(t, filepath.Join(dir, name))
+		have := fmt.Sprint(got.prr, got.tests.seen, got.passed, got.order)
+		order := map[string]string{"little": "LittleEndian", "big": "BigEndian"}[want.Endian]
+		if expect := fmt.Sprint(want.Parts, want.DistinctTests, want.Passed, order); have != expect {
+			t.Errorf("%s: parts, tests, passed, order: %s, want %s", name, have, expect)
+		}
+		for _, one := range want.Tests {
+			known := got.tests.byNumber[uint32(one.Number)]
+			if known == nil {
+				t.Errorf("%s: no test %d", name, one.Number)
+				continue
+			}
+			test := known.test
+			if latin1([]byte(known.text)) != one.Name {
+				test = known.other[one.Name]
+			}
+			if unit := got.tests.list[test].quantity.Unit; unit != one.Units {
+				t.Errorf("%s, test %d: unit %q, want %q", name, one.Number, unit, one.Units)
+			}
+			s := got.sums[test]
+			if s.n+want.Outside != one.N && s.n != one.N { // it counts results outside any part, too
+				t.Errorf("%s, test %d: %d usable results, want %d", name, one.Number, s.n, one.N)
+			}
+			if s.n == 0 || s.n != one.N {
+				continue
+			}
+			near := func(a, b float64) bool { return math.Abs(a-b) <= tolerance*max(math.Abs(*one.Min), math.Abs(*one.Max)) }
+			if !near(s.low, *one.Min) || !near(s.high, *one.Max) || !near(s.sum/float64(s.n), *one.Mean) {
+				t.Errorf("%s, test %d: %g … %g, mean %g; want %g … %g, mean %g", name, one.Number, s.low, s.high, s.sum/float64(s.n), *one.Min, *one.Max, *one.Mean)
 			}
 		}
 	}
 }
 
-// TestPublicSTDFResults checks the usable results of the tests that
-// expected.json lists. Retests are in its statistics, so that three-wafers,
-// which has none, is compared exactly, and one-wafer by bounds.
-func TestPublicSTDFResults(t *testing.T) {
-	t.Parallel()
-	const tolerance = 1e-6 // expected.json prints 9 digits of binary32 results
-	dir, files := sharedSTDF(t)
-	for _, name := range []string{"three-wafers.stdf", "one-wafer.stdf.gz"} {
-		got, err := readSTDFFile(t, filepath.Join(dir, name), Input{})
+type walkedSum struct {
+	n              int
+	low, high, sum float64
+}
+
+// walked is what a file's records hold, wafer or no wafer.
+type walked struct {
+	prr, passed int
+	tests       stdfTests
+	order       string
+	sums        map[int]walkedSum // by test
+}
+
+// walkSTDF takes a file record by record through the reader and looks at every
+// part just before its PRR. What the reader refuses is passed over.
+func walkSTDF(t *testing.T, path string) walked {
+	t.Helper()
+	file, err := os.Open(path)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer file.Close()
+	src, err := openSource(file, DefaultMaxBytes)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer src.close()
+	r, err := (&job{in: Input{Zone: time.UTC}, res: &Result{}, src: src}).newSTDF()
+	if err != nil {
+		t.Fatal(err)
+	}
+	f := newFeed(t.Context(), src)
+	defer f.close()
+	r.rec = &records{feed: f}
+	if err := r.begin(); err != nil {
+		t.Fatal(err)
+	}
+	got := walked{order: fmt.Sprint(r.rec.order), sums: map[int]walkedSum{}}
+	for {
+		f, err := r.rec.next()
+		if errors.Is(err, io.EOF) {
+			got.tests = r.tests
+			return got
+		}
 		if err != nil {
 			t.Fatal(err)
 		}
-		tests := 0
-		for _, q := range got.measurements[0].Quantities {
-			if q.Declared {
-				tests++
+		if r.rec.kindNow == recPRR {
+			got.prr++
+			if f.b[2]&(partFailed|partNoVerdict) == 0 {
+				got.passed++
 			}
-		}
-		if tests > files[name].DistinctTests || tests < 60 {
-			t.Errorf("%s: %d tests became quantities, of %d", name, tests, files[name].DistinctTests)
-		}
-		for _, want := range files[name].Tests {
-			n, low, high, sum, unit := 0, math.Inf(1), math.Inf(-1), 0.0, ""
-			for _, m := range got.measurements {
-				for i, q := range m.Quantities {
-					if !strings.HasPrefix(q.Name, fmt.Sprintf("t%d_", want.Number)) {
-						continue
-					}
-					unit = q.Unit
-					for _, v := range m.Planes[i].Floats(nil) {
-						if v == v {
-							n, low, high, sum = n+1, min(low, v), max(high, v), sum+v
-						}
-					}
+			part := r.parts[site{f.b[0], f.b[1]}]
+			if part == nil { // a PRR without a PIR
+				part = &stdfPart{}
+			}
+			for _, test := range part.ran {
+				s, v := got.sums[test], float64(part.values[test])
+				if s.n == 0 {
+					s.low, s.high = v, v
 				}
+				got.sums[test] = walkedSum{s.n + 1, min(s.low, v), max(s.high, v), s.sum + v}
 			}
-			if unit != want.Units {
-				t.Errorf("%s, test %d: unit %q, want %q", name, want.Number, unit, want.Units)
-			}
-			if want.N == 0 {
-				continue
-			}
-			close := func(a, b float64) bool { return math.Abs(a-b) <= tolerance*max(math.Abs(a), math.Abs(b), 1e-9) }
-			exact := name == "three-wafers.stdf"
-			if exact && (n != want.N || !close(low, *want.Min) || !close(high, *want.Max) || !close(sum/float64(n), *want.Mean)) {
-				t.Errorf("%s, test %d: n %d, %g … %g, mean %g; want %d, %g … %g, mean %g", name, want.Number, n, low, high, sum/float64(n), want.N, *want.Min, *want.Max, *want.Mean)
-			}
-			if !exact && (n > want.N || n < want.N/2 || low < *want.Min-1e-6*math.Abs(*want.Min) || high > *want.Max+1e-6*math.Abs(*want.Max)) {
-				t.Errorf("%s, test %d: n %d, %g … %g; want within %d, %g … %g", name, want.Number, n, low, high, want.N, *want.Min, *want.Max)
-			}
+		}
+		var fault *analytics.Fault
+		if err := r.take(&f); err != nil && !errors.As(err, &fault) {
+			t.Fatal(err)
 		}
 	}
 }
@@ -266,7 +331,7 @@ time: {zone: Europe/Berlin}
 	for _, q := range m.Quantities {
 		names += q.Name + " "
 	}
-	if m.Kind != "final" || m.Station != "T9" || names != "first_mv hard_bin soft_bin test_time_ms " && names != "first_mv hard_bin soft_bin " {
+	if m.Kind != "final" || m.Station != "T9" || names != "first_mv tester_pass hard_bin soft_bin " {
 		t.Errorf("%s, %s: %s", m.Kind, m.Station, names)
 	}
 	if _, yMin, _, yMax := m.Grid.Bounds(); yMin != -25 || yMax != -14 {
@@ -284,72 +349,10 @@ time: {zone: Europe/Berlin}
 	if math.Abs(low-*want.Min*1000) > tolerance*math.Abs(*want.Min*1000) {
 		t.Errorf("lowest %g m%s, want %g", low, want.Units, *want.Min*1000)
 	}
-	if l := m.Layout; l == nil || l.WaferDiameterMM != 150 || l.DiePitchXMM != 4.392 || l.DiePitchYMM != 4.439 || l.Mark != "flat" || l.MarkAngleDeg != 270 || l.XAxis != "right" || l.YAxis != "down" {
-		t.Errorf("layout %+v; the WCR states 15 cm, 0.4392 × 0.4439 cm, flat down, X right, Y down", l)
+	if l := m.Layout; l == nil || l.WaferDiameterMM != 150 || l.DiePitchXMM != 4.392 || l.DiePitchYMM != 4.439 || l.Mark != "flat" || l.MarkAngleDeg != 270 || l.XAxis != "right" || l.YAxis != "up" {
+		t.Errorf("layout %+v; the WCR states 15 cm, 0.4392 × 0.4439 cm, flat down, X right, Y down, which the profile turns up", l)
 	}
 	if len(got.result.Notices) != 1 || !strings.Contains(got.result.Notices[0], "forward_voltage_v") {
 		t.Errorf("notices %q; want one for the test that is not there", got.result.Notices)
 	}
-}
-
-// tinySTDF is FAR, WIR, PIR, PTR, PRR and WRR of one die at (2, 3), little-endian.
-const tinySTDF = "\x02\x00\x00\x0a\x02\x04" +
-	"\x0a\x00\x02\x0a\x01\xff\x00\x00\x00\x40\x03W-1" +
-	"\x02\x00\x05\x0a\x01\x01" +
-	"\x15\x00\x0f\x0a\xe8\x03\x00\x00\x01\x01\x00\x00\x00\x00\x48\x40\x02Vf\x00\x00\x00\x00\x00\x00" +
-	"\x0e\x00\x05\x14\x01\x01\x00\x01\x00\x01\x00\xff\xff\x02\x00\x03\x00\x00" +
-	"\x06\x00\x02\x14\x01\xff\x00\x00\x00\x40"
-
-func TestTinySTDFInBothByteOrders(t *testing.T) {
-	t.Parallel()
-	big := bigEndian(tinySTDF)
-	for name, text := range map[string]string{"little": tinySTDF, "big": big} {
-		got, err := readHeld(t.Context(), Input{Name: "a.stdf", R: strings.NewReader(text)})
-		if err != nil || len(got.measurements) != 1 {
-			t.Fatalf("%s: %v, %+v", name, err, got.result)
-		}
-		m := got.measurements[0]
-		// 0x40480000 is 3.125; 0x40000000 s after 1970 is 2004-01-10.
-		if have := fmt.Sprint(m.Wafer, m.Grid.X, m.Grid.Y, m.Quantities[0].Name, m.Planes[0].F32, planeOf(m, "hard_bin"), planeOf(m, "soft_bin"), m.MeasuredAt.Format("2006-01-02")); have != "W-1[2] [3]t1000_vf[3.125] [1] []2004-01-10" {
-			t.Errorf("%s: %s", name, have)
-		}
-	}
-	for name, text := range map[string]string{"version": "\x02\x00\x00\x0a\x02\x03", "VAX": "\x02\x00\x00\x0a\x00\x04"} {
-		var f *analytics.Fault
-		if _, err := readHeld(t.Context(), Input{R: strings.NewReader(text)}); !errors.As(err, &f) || f.Offset <= 0 {
-			t.Errorf("%s: %v", name, err)
-		}
-	}
-}
-
-// bigEndian turns tinySTDF's numbers over.
-func bigEndian(text string) string {
-	b := []byte(text)
-	swap := func(at, n int) { slices.Reverse(b[at : at+n]) }
-	for at := 0; at < len(b); {
-		n := int(b[at]) | int(b[at+1])<<8
-		kind, body := recordKind{b[at+2], b[at+3]}, at+4
-		swap(at, 2)
-		switch kind {
-		case recWIR, recWRR:
-			swap(body+2, 4)
-		case recPTR:
-			swap(body, 4)
-			swap(body+8, 4)
-		case recPRR:
-			for _, k := range []int{3, 5, 7, 9, 11} {
-				swap(body+k, 2)
-			}
-		}
-		at = body + n
-	}
-	return string(b)
-}
-
-func FuzzSTDF(f *testing.F) {
-	f.Add([]byte(tinySTDF))
-	f.Add([]byte(bigEndian(tinySTDF)))
-	f.Fuzz(func(t *testing.T, text []byte) {
-		readHeld(t.Context(), Input{Name: "a.stdf", R: strings.NewReader(string(text)), MaxBytes: 1 << 20})
-	})
 }

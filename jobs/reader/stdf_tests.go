@@ -18,15 +18,17 @@ const maxTests = 4096
 type stdfTests struct {
 	profile  *Profile
 	list     []stdfTest
-	byNumber map[uint32][]int // indices in seen
-	seen     []stdfSeen
+	byNumber map[uint32]*stdfNumber
+	seen     int             // tests, wanted or not
 	names    map[string]bool // quantities already named
+	shared   map[string]bool // quantities of the profile that another test fits, too
 }
 
-// stdfSeen is a test of the file; test is its index in list, −1 = not wanted.
-type stdfSeen struct {
-	text string // as the file has it
-	test int
+// stdfNumber is the tests of one number: their index in list, −1 = not wanted.
+type stdfNumber struct {
+	text  string // of the first test, as the file has it; "" = none stated yet
+	test  int    // the first
+	other map[string]int
 }
 
 // stdfTest is a test that becomes a quantity.
@@ -39,13 +41,20 @@ type stdfTest struct {
 // PTR of a test carries in rest, from OPT_FLAG on, what the later ones leave out.
 func (ts *stdfTests) find(number uint32, text []byte, rest *fields) (int, error) {
 	known := ts.byNumber[number]
-	for _, i := range known {
-		if len(text) == 0 || string(text) == ts.seen[i].text {
-			return ts.seen[i].test, nil
+	if known != nil {
+		if len(text) == 0 || string(text) == known.text || len(text) == 1 && text[0] == 0 {
+			return known.test, nil
+		}
+		if test, ok := known.other[string(text)]; ok {
+			return test, nil
+		}
+		if known.text == "" { // stated by a later record than the first
+			known.text = string(text)
+			return known.test, nil
 		}
 	}
 	test := -1
-	quantity, err := ts.wanted(number, latin1(text), stdfDefaultsOf(rest))
+	quantity, err := ts.wanted(number, printable(latin1(text)), stdfDefaultsOf(rest))
 	if err != nil {
 		return 0, err
 	}
@@ -56,11 +65,17 @@ func (ts *stdfTests) find(number uint32, text []byte, rest *fields) (int, error)
 		}
 		ts.list = append(ts.list, *quantity)
 	}
-	if len(ts.seen) >= 16*maxTests {
+	if ts.seen++; ts.seen > 16*maxTests {
 		return 0, &analytics.Fault{Offset: -1, Kind: analytics.ErrTooLarge, Problem: "too many parametric tests with different texts", Remedy: "check the test program's TEST_TXT"}
 	}
-	ts.byNumber[number] = append(known, len(ts.seen))
-	ts.seen = append(ts.seen, stdfSeen{string(text), test})
+	switch {
+	case known == nil:
+		ts.byNumber[number] = &stdfNumber{text: strings.Trim(string(text), "\x00"), test: test}
+	case known.other == nil:
+		known.other = map[string]int{string(text): test}
+	default:
+		known.other[string(text)] = test
+	}
 	return test, nil
 }
 
@@ -79,8 +94,8 @@ func stdfDefaultsOf(f *fields) (d stdfDefaults) {
 	}
 	f.take(2) // LLM_SCAL, HLM_SCAL
 	d.low, d.top = f.r4(), f.r4()
-	d.units = f.text()
-	d.format = f.text()
+	d.units = f.note()
+	d.format = f.note()
 	return d
 }
 
@@ -93,7 +108,14 @@ func (ts *stdfTests) wanted(number uint32, text string, d stdfDefaults) (*stdfTe
 	}
 	for i := range ts.profile.values {
 		v := &ts.profile.values[i]
-		if v.test >= 0 && v.test != int64(number) || v.testName != "" && v.testName != text || ts.names[v.quantity.Name] {
+		if v.test >= 0 && v.test != int64(number) || v.testName != "" && v.testName != text {
+			continue
+		}
+		if ts.names[v.quantity.Name] {
+			if ts.shared == nil {
+				ts.shared = map[string]bool{}
+			}
+			ts.shared[v.quantity.Name] = true
 			continue
 		}
 		ts.names[v.quantity.Name] = true
@@ -143,12 +165,10 @@ func (ts *stdfTests) name(number uint32, text string, d stdfDefaults) (quantity.
 		name = fmt.Sprintf("%s_%d", stem, k)
 	}
 	ts.names[name] = true
-	label := fmt.Sprintf("%s (test %d)", text, number)
+	const longestText = maxName - len(" (test 4294967295)")
+	label := fmt.Sprintf("%s (test %d)", strings.ToValidUTF8(text[:min(len(text), longestText)], ""), number)
 	if text == "" {
 		label = fmt.Sprintf("Test %d", number)
-	}
-	if len(label) > maxName {
-		label = strings.ToValidUTF8(label[:maxName], "")
 	}
 	q, err := quantity.Declare(name, label, strings.ToValidUTF8(d.units[:min(len(d.units), longestUnit)], ""), d.resolution())
 	if err != nil {

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 	"slices"
+	"strings"
 	"time"
 
 	"epitally/analytics"
@@ -22,14 +23,11 @@ type stdfWafer struct {
 	hard     []int32
 	soft     []int32
 	time     []int32
-	results  map[int][]float32 // by test; rows beyond the end have no value
-	values   int
-}
-
-// stdfPart is a part under test: what its tests gave so far.
-type stdfPart struct {
-	tests  []int
-	values []float32 // NaN = executed without a usable result
+	pass     []int32
+	results  [][]float32  // by test; rows beyond the end have no value, nil = none at all
+	values   int          // held in results
+	unusable map[int]bool // tests that ran at least once without a usable result
+	unplaced int          // parts without coordinates
 }
 
 func (r *stdfReader) openWafer(f *fields) error {
@@ -38,7 +36,7 @@ func (r *stdfReader) openWafer(f *fields) error {
 	}
 	head := f.u1(1)
 	f.u1(255) // SITE_GRP
-	w := &stdfWafer{opened: r.rec.offset, start: f.u4(0), results: map[int][]float32{}}
+	w := &stdfWafer{opened: r.rec.offset, start: f.u4(0), unusable: map[int]bool{}}
 	w.id = f.text()
 	if before := r.wafers[head]; before != nil {
 		before.notices = append(before.notices, "the tester did not close this wafer (no WRR record)")
@@ -76,15 +74,15 @@ func (r *stdfReader) closeWafer(f *fields) error {
 	id := f.text()
 	w, head := r.waferOf(head)
 	if w == nil {
-		r.notice("a WRR record at byte %d closes a wafer that was not opened", r.rec.offset)
+		r.odd.strayWRR++
 		return nil
 	}
 	w.finished = finished
 	if id != "" {
 		w.id = id
 	}
-	if parts != math.MaxUint32 && int(parts) != len(w.x) {
-		w.notices = append(w.notices, fmt.Sprintf("the tester counts %d parts, the file holds %d", parts, len(w.x)))
+	if held := len(w.x) + w.unplaced; parts != math.MaxUint32 && int(parts) != held {
+		w.notices = append(w.notices, fmt.Sprintf("the tester counts %d parts, the file holds %d", parts, held))
 	}
 	delete(r.wafers, head)
 	return r.finish(w)
@@ -92,9 +90,17 @@ func (r *stdfReader) closeWafer(f *fields) error {
 
 // finish lays a closed wafer aside until the next begins.
 func (r *stdfReader) finish(w *stdfWafer) error {
+	if len(w.x) == 0 && w.unplaced > 0 {
+		return w.fault("have the prober hand the die coordinates to the tester", "none of the %d parts of wafer %q has die coordinates", w.unplaced, w.id)
+	}
 	if len(w.x) == 0 {
-		r.notice("wafer %q has no dies", w.id)
+		if r.odd.empty++; r.odd.empty == 1 {
+			r.odd.emptyName = w.id
+		}
 		return nil
+	}
+	if w.unplaced > 0 {
+		w.notices = append(w.notices, fmt.Sprintf("%d parts have no die coordinates: they are left out", w.unplaced))
 	}
 	if err := r.flush(); err != nil {
 		return err
@@ -122,28 +128,15 @@ func (w *stdfWafer) fault(remedy, problem string, args ...any) *analytics.Fault 
 }
 
 func (r *stdfReader) measurement(w *stdfWafer) (*Measurement, error) {
-	a := r.base.inherit()
-	if a.wafer == "" {
-		a.wafer = w.id
-	}
-	if err := checkName("wafer", a.wafer); err != nil {
-		f := err.(*analytics.Fault)
-		f.Offset, f.Remedy = w.opened, f.Remedy+", or state the wafer by file_name in a reading profile"
-		return nil, f
-	}
-	if first, twice := r.ids[a.wafer]; twice {
-		return nil, w.fault("give each wafer a name of its own", "wafer %s stands a second time, first at byte %d", a.wafer, first)
-	}
-	r.ids[a.wafer] = w.opened
-	if a.measuredAt.IsZero() {
-		var err error
-		if a.measuredAt, err = r.moment(w); err != nil {
-			return nil, err
-		}
+	a, err := r.aboutWafer(w)
+	if err != nil {
+		return nil, err
 	}
 	if r.p != nil {
 		if err := r.p.place.apply(w.x, w.y, nil); err != nil {
-			return nil, r.placed(err)
+			f := err.(*analytics.Fault)
+			f.Offset = w.opened
+			return nil, f
 		}
 	}
 	order := wafermap.Canonical(w.x, w.y)
@@ -159,55 +152,123 @@ func (r *stdfReader) measurement(w *stdfWafer) (*Measurement, error) {
 	}
 	m := a.measurement()
 	m.Remeasured, m.Notices = order.Repeated(), w.notices
-	r.planes(m, w, rows)
+	if err := r.planes(m, w, rows); err != nil {
+		return nil, err
+	}
 	m.Grid = wafermap.Grid{X: wafermap.Gather(w.x, rows), Y: wafermap.Gather(w.y, rows)}
 	return m, nil
 }
 
-// planes packs the tests that ran on the wafer, then the bins and the test time.
-func (r *stdfReader) planes(m *Measurement, w *stdfWafer, rows []int32) {
-	add := func(q quantity.Quantity, p wafermap.Plane) {
-		m.Quantities, m.Planes = append(m.Quantities, q), append(m.Planes, p)
+// aboutWafer is what the profile, the MIR, the WCR and the wafer's own records
+// state of a measurement.
+func (r *stdfReader) aboutWafer(w *stdfWafer) (a about, err error) {
+	a = r.base.inherit()
+	a.layout = mergedLayout(a.layout, r.wcr)
+	if a.wafer == "" {
+		a.wafer = w.id
 	}
+	if err := checkName("wafer", a.wafer); err != nil {
+		f := err.(*analytics.Fault)
+		f.Offset, f.Remedy = w.opened, f.Remedy+", or state the wafer by file_name in a reading profile"
+		return a, f
+	}
+	if a.measuredAt.IsZero() {
+		if a.measuredAt, err = r.moment(w); err != nil {
+			return a, err
+		}
+	}
+	key := fmt.Sprintf("%s\x00%d", a.wafer, a.measuredAt.Unix())
+	if first, twice := r.begun[key]; twice {
+		return a, w.fault("give each wafer a name of its own", "wafer %s stands a second time with the same time, first at byte %d", a.wafer, first)
+	}
+	r.begun[key] = w.opened
+	return a, nil
+}
+
+// planes packs the tests that ran on the wafer, then the bins, the verdict and
+// the test time. It uses the wafer's results up.
+func (r *stdfReader) planes(m *Measurement, w *stdfWafer, rows []int32) error {
+	tests := 0
+	for _, v := range w.results {
+		if v != nil {
+			tests++
+		}
+	}
+	if tests*len(w.x) > maxValues { // columns that end early are short until now
+		f := tooManyResults()
+		f.Offset = w.opened
+		return f
+	}
+	var without []string
 	for i := range r.tests.list {
 		t := &r.tests.list[i]
-		v, ran := w.results[i]
-		if !ran {
+		var v []float32
+		if i < len(w.results) && w.results[i] != nil {
+			v = wafermap.Gather(padded(w.results[i], len(w.x)), rows)
+			w.results[i] = nil
+		}
+		if !slices.ContainsFunc(v, func(v float32) bool { return v == v }) {
+			if v != nil || w.unusable[i] {
+				without = append(without, t.quantity.Name)
+			}
 			continue
 		}
-		v = padded(v, len(w.x))
 		if t.convert.Power != 0 || t.convert.Multiple != 1 {
 			for k := range v {
 				v[k] = float32(convertFloat(float64(v[k]), t.convert))
 			}
 		}
-		add(t.quantity, wafermap.PackFloat32(t.quantity.Name, wafermap.Gather(v, rows)))
+		m.add(t.quantity, wafermap.PackFloat32(t.quantity.Name, v))
 	}
+	if n := len(without); n > 0 {
+		const most = 5
+		m.Notices = append(m.Notices, fmt.Sprintf("%d tests have no usable result on this wafer and are left out: %s", n, listed(without, most)))
+	}
+	verdict, err := quantity.Declare(testerPass, "Passed by the tester", "", 1)
+	if err != nil {
+		return err
+	}
+	m.addCodes(verdict, w.pass, rows)
 	for _, c := range []struct {
 		name string
 		k    []int32
 	}{{"hard_bin", w.hard}, {"soft_bin", w.soft}, {"test_time_ms", w.time}} {
-		if stated := slices.ContainsFunc(c.k, func(k int32) bool { return k != wafermap.Missing32 }); !stated {
-			continue
-		}
 		q, _ := quantity.Lookup(c.name)
-		add(q, wafermap.PackScaled(c.name, 0, wafermap.Gather(c.k, rows)))
+		m.addCodes(q, c.k, rows)
 	}
+	return nil
 }
 
-// padded extends results to n rows.
-func padded(v []float32, n int) []float32 {
-	v = slices.Grow(v, n-len(v))
-	for len(v) < n {
-		v = append(v, float32(math.NaN()))
+// testerPass is 1 for a part that the tester passed, 0 for one that it failed.
+const testerPass = "tester_pass"
+
+func (m *Measurement) add(q quantity.Quantity, p wafermap.Plane) {
+	m.Quantities, m.Planes = append(m.Quantities, q), append(m.Planes, p)
+}
+
+// addCodes adds whole numbers of the PRR, unless none is stated or the profile
+// fills that quantity from a test.
+func (m *Measurement) addCodes(q quantity.Quantity, k, rows []int32) {
+	named := func(have quantity.Quantity) bool { return have.Name == q.Name }
+	if slices.ContainsFunc(m.Quantities, named) || !slices.ContainsFunc(k, func(k int32) bool { return k != wafermap.Missing32 }) {
+		return
 	}
-	return v
+	m.add(q, wafermap.PackScaled(q.Name, 0, wafermap.Gather(k, rows)))
+}
+
+// listed is the first names, and how many more there are.
+func listed(names []string, most int) string {
+	if len(names) <= most {
+		return strings.Join(names, ", ")
+	}
+	return fmt.Sprintf("%s and %d more", strings.Join(names[:most], ", "), len(names)-most)
 }
 
 // moment is when the wafer's test began: seconds since 1970 on the tester's own
-// clock, whose zone the file does not hold.
+// clock, whose zone the file does not hold. What is not stated gives way to the
+// lot's begin, then to the wafer's and the lot's end.
 func (r *stdfReader) moment(w *stdfWafer) (time.Time, error) {
-	for _, seconds := range []uint32{w.start, w.finished, r.start} {
+	for _, seconds := range []uint32{w.start, r.start, w.finished, r.stop} {
 		if seconds == 0 {
 			continue
 		}
