@@ -24,24 +24,35 @@ func (b *bench) measureLoad(ctx context.Context) error {
 		forward_voltage_v double precision, reverse_current_ua double precision)`); err != nil {
 		return err
 	}
-	copied, err := b.psql(ctx, fmt.Sprintf(`\copy die_row FROM '%s' WITH (FORMAT csv, HEADER true)`, b.fixture.plain))
+	copyRows := fmt.Sprintf(`\copy die_row FROM '%s' WITH (FORMAT csv, HEADER true)`, b.fixture.plain)
+	peer, err := best(3, func() (time.Duration, error) {
+		if _, err := b.psql(ctx, "DROP INDEX IF EXISTS die_row_wafer; TRUNCATE die_row; CHECKPOINT"); err != nil {
+			return 0, err
+		}
+		copied, err := b.psql(ctx, copyRows)
+		if err != nil {
+			return 0, err
+		}
+		indexed, err := b.psql(ctx, "CREATE INDEX die_row_wafer ON die_row (wafer)")
+		return copied + indexed, err
+	})
 	if err != nil {
-		return err
-	}
-	indexed, err := b.psql(ctx, "CREATE INDEX die_row_wafer ON die_row (wafer)")
-	if err != nil {
-		return err
-	}
-	if _, err := b.psql(ctx, "CHECKPOINT"); err != nil {
 		return err
 	}
 	say("epitally load of the same %d dies", b.fixture.dies)
-	took, memory, err := b.load(ctx, b.fixture.own)
+	memory := 0.0
+	took, err := best(3, func() (time.Duration, error) {
+		if _, err := b.psql(ctx, "TRUNCATE measurement, measurement_key, plane, summary, small_map, tally; DELETE FROM source WHERE dies > 0; CHECKPOINT"); err != nil {
+			return 0, err
+		}
+		took, mb, err := b.load(ctx, b.fixture.own)
+		memory = max(memory, mb)
+		return took, err
+	})
 	if err != nil {
 		return err
 	}
-	peer := copied.Seconds() + indexed.Seconds()
-	b.atLeast(fmt.Sprintf("load a CSV of %d dies, durable, against \\copy", b.fixture.dies), took.Seconds(), peer, "s", peer/took.Seconds(), 5)
+	b.atLeast(fmt.Sprintf("load a CSV of %d dies, durable, against \\copy", b.fixture.dies), took.Seconds(), peer.Seconds(), "s", peer.Seconds()/took.Seconds(), 5)
 	b.under("memory while loading it", memory, "MB", 200)
 	b.store, err = db.Open(ctx, db.Config{URL: b.url, MaxConns: 8})
 	return err
