@@ -19,7 +19,8 @@ import (
 // through for a cause they share.
 const reasonsCompared = 500
 
-var sourceStates = []string{db.SourceWaiting, db.SourceReading, db.SourceStored, db.SourceRefused}
+// sourceStates are those that a source is recorded with.
+var sourceStates = []string{db.SourceStored, db.SourceRefused}
 
 func (s *Server) pageLoads(c echo.Context) error {
 	ctx := c.Request().Context()
@@ -98,8 +99,12 @@ func (s *Server) lastHour(ctx context.Context) (f web.LoadsFound, err error) {
 // numbers.
 var sameButNames = regexp.MustCompile(`"[^"]*"|\b\d+\b`)
 
-// reasonOf is why a source was refused, without its own name before it.
-func reasonOf(src *db.Source) string { return strings.TrimPrefix(src.Reason, src.Name+": ") }
+// reasonOf is why a source was refused, without its own name and the place
+// before it: pages say both beside it.
+func reasonOf(src *db.Source) string {
+	reason := strings.TrimPrefix(src.Reason, src.Name+": ")
+	return strings.TrimPrefix(strings.TrimPrefix(reason, "at "), placeWords(src)+": ")
+}
 
 func (s *Server) loadLine(src *db.Source) web.LoadLine {
 	line := web.LoadLine{Name: src.Name, Href: "/loads/" + strconv.FormatInt(src.ID, 10), State: src.State, Format: src.Format,

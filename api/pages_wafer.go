@@ -12,6 +12,7 @@ import (
 
 	"epitally/analytics"
 	"epitally/analytics/quantity"
+	"epitally/analytics/wafermap"
 	"epitally/db"
 	"epitally/web"
 )
@@ -64,7 +65,7 @@ func (s *Server) waferInput(c echo.Context) (*web.WaferInput, *db.Measurement, e
 		return nil, nil, err
 	}
 	for _, sum := range summaries {
-		in.Planes = append(in.Planes, plotted(sum, w.Targets))
+		in.Planes = append(in.Planes, plotted(sum, w.Targets, m.Layout))
 	}
 	return in, m, nil
 }
@@ -97,9 +98,9 @@ func measurementInput(m *db.Measurement) web.MeasurementInput {
 		Remeasured: m.Remeasured, Current: m.Current, SourceID: m.SourceID, Layout: m.Layout, Facts: m.Facts, Notices: m.Notices}
 }
 
-func plotted(s db.Summary, targets []db.Target) web.Plotted {
+func plotted(s db.Summary, targets []db.Target, l *wafermap.Layout) web.Plotted {
 	// The target that the summary was made with, as on the server's pictures.
-	p := web.Plotted{Quantity: s.Quantity, Summary: s.Summary, Target: s.Summary.Target}
+	p := web.Plotted{Quantity: s.Quantity, Summary: s.Summary, Target: s.Summary.Target, Layout: l}
 	for _, t := range targets {
 		if t.Quantity == s.Quantity.Name {
 			p.Window = t.Window

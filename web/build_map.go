@@ -46,9 +46,18 @@ func inWords(q quantity.Quantity) string {
 	return lowerFirst(q.Label) + " (" + q.Unit + ")"
 }
 
+// lengthUnit is what lengths on a wafer are in: dies, where neither the source
+// nor a product says how large one is.
+func lengthUnit(l *wafermap.Layout) string {
+	if l != nil && l.Name == wafermap.AssumedUnits {
+		return "dies"
+	}
+	return "mm"
+}
+
 func mapLayout(l *wafermap.Layout) MapLayout {
 	out := MapLayout{Diameter: l.WaferDiameterMM, PitchX: l.DiePitchXMM, PitchY: l.DiePitchYMM, Edge: l.EdgeExclusionMM, Mark: l.Mark, MarkAngle: l.MarkAngleDeg,
-		FlipX: l.XAxis == "left", FlipY: l.YAxis == "down", CentreX: l.CentreX, CentreY: l.CentreY, Assumed: l.Assumed}
+		FlipX: l.XAxis == "left", FlipY: l.YAxis == "down", CentreX: l.CentreX, CentreY: l.CentreY, Assumed: l.Assumed, LengthUnit: lengthUnit(l)}
 	if l.Mark == "flat" {
 		out.FlatHeight = flatOffsetMM(l.WaferDiameterMM)
 	}
@@ -63,6 +72,8 @@ func mapQuantity(p Plotted, api string) MapQuantity {
 		Scale: "magnitude", Low: low, High: high}
 	if !math.IsNaN(target) {
 		out.Scale, out.Target = "deviation", &target
+	} else if q.Scale == quantity.Category {
+		out.Scale = "category"
 	}
 	return out
 }

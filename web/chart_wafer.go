@@ -9,6 +9,7 @@ import (
 
 	"epitally/analytics/quantity"
 	"epitally/analytics/uniformity"
+	"epitally/analytics/wafermap"
 )
 
 // Plotted is one quantity's summary with what it is held against.
@@ -18,6 +19,7 @@ type Plotted struct {
 	Target   float64 // NaN: none
 	Window   float64 // half width, 0: none
 	CSVURL   string
+	Layout   *wafermap.Layout // says what lengths are in; nil = mm
 }
 
 // axisTitle is a quantity's label with its unit.
@@ -85,9 +87,9 @@ func RadialChart(p Plotted) *Chart {
 		return nil
 	}
 	decimals := Decimals(q.Resolution)
-	unit := unitOr(q.Unit)
+	unit, length := unitOr(q.Unit), lengthUnit(p.Layout)
 	c := &Chart{ID: "radial", Question: "Does " + lowerFirst(q.Label) + " change towards the edge?", CSVURL: p.CSVURL,
-		Table: Table{Head: []string{"from / mm", "to / mm", "mean / " + unit, "sd / " + unit, "dies"}}}
+		Table: Table{Head: []string{"from / " + length, "to / " + length, "mean / " + unit, "sd / " + unit, "dies"}}}
 	var mean, floor, band []opts.LineData
 	total := 0
 	for _, r := range p.Summary.Radial {
@@ -100,7 +102,7 @@ func RadialChart(p Plotted) *Chart {
 		if math.IsNaN(sd) {
 			sd = 0
 		}
-		words := fmt.Sprintf("%s to %s: mean %s, sd %s, %s", Number(r.InnerMM, 1), With(r.OuterMM, 1, "mm"),
+		words := fmt.Sprintf("%s to %s: mean %s, sd %s, %s", Number(r.InnerMM, 1), With(r.OuterMM, 1, length),
 			With(r.Mean, decimals, q.Unit), With(r.SD, decimals, q.Unit), Plural(r.N, "die", "dies"))
 		mean = append(mean, opts.LineData{Name: words, Value: []float64{at, round(r.Mean, 9)}})
 		floor = append(floor, opts.LineData{Value: []float64{at, round(r.Mean-sd, 9)}})
@@ -113,7 +115,7 @@ func RadialChart(p Plotted) *Chart {
 	c.Label = "Radial profile of " + lowerFirst(q.Label) + ". " + c.Caption
 	line := charts.NewLine()
 	last := p.Summary.Radial[len(p.Summary.Radial)-1].OuterMM
-	line.SetGlobalOptions(tooltip(), margins("78", "24"), valueAxes("distance from the wafer's centre / mm", axisTitle(q), 0, math.Ceil(last), false))
+	line.SetGlobalOptions(tooltip(), margins("78", "24"), valueAxes("distance from the wafer's centre / "+length, axisTitle(q), 0, math.Ceil(last), false))
 	bare := func(s *charts.SingleSeries) {
 		s.Stack, s.Symbol = "band", "none"
 		s.LineStyle = &opts.LineStyle{Width: 0.01, Opacity: opts.Float(0)}

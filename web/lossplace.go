@@ -39,13 +39,13 @@ func LossPlace(g *wafermap.Grid, l *wafermap.Layout, codes []uint16, code uint16
 		return ""
 	}
 	if w := narrowest(lost, all, total, g.Len()); w > 0 {
-		return "in the outer " + With(float64(w), 0, "mm")
+		return "in the outer " + With(float64(w), 0, lengthUnit(l))
 	}
 	reverse(lost)
 	reverse(all)
 	// The innermost ring may reach beyond the centre by part of a millimetre.
 	if w := narrowest(lost, all, total, g.Len()); w > 1 {
-		return "within " + With(float64(w-1), 0, "mm") + " of the centre"
+		return "within " + With(float64(w-1), 0, lengthUnit(l)) + " of the centre"
 	}
 	return ""
 }

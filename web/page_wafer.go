@@ -59,7 +59,7 @@ type MapData struct {
 	Palette    Palettes      `json:"palette"`
 }
 
-// MapLayout is the part of a layout that drawing needs; lengths in mm.
+// MapLayout is the part of a layout that drawing needs; lengths in LengthUnit.
 type MapLayout struct {
 	Diameter   float64 `json:"diameter"`
 	PitchX     float64 `json:"pitch_x"`
@@ -72,6 +72,7 @@ type MapLayout struct {
 	CentreX    float64 `json:"centre_x"`
 	CentreY    float64 `json:"centre_y"`
 	Assumed    bool    `json:"assumed"`
+	LengthUnit string  `json:"length_unit"` // "mm", or "dies" where no pitch is known
 	FlatHeight float64 `json:"flat_offset"` // distance of the flat's chord from the centre; 0 = no flat
 }
 
@@ -82,7 +83,7 @@ type MapQuantity struct {
 	Unit     string   `json:"unit"`
 	Decimals int      `json:"decimals"`
 	Plane    string   `json:"plane"` // URL of the binary plane
-	Scale    string   `json:"scale"` // "deviation" or "magnitude"
+	Scale    string   `json:"scale"` // "deviation", "magnitude" or "category"
 	Low      float64  `json:"low"`
 	High     float64  `json:"high"`
 	Target   *float64 `json:"target"`

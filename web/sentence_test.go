@@ -16,6 +16,7 @@ func TestWaferSentence(t *testing.T) {
 	t.Parallel()
 	dominant, _ := quantity.Lookup("dominant_wavelength_nm")
 	voltage, _ := quantity.Lookup("forward_voltage_v")
+	hardBin, _ := quantity.Lookup("hard_bin")
 	nan := math.NaN()
 	at := func(median float64) *uniformity.Summary { return &uniformity.Summary{N: 14516, Median: median} }
 	base := WaferFound{Wafer: "K-0412-07", Measured: true, Quantity: dominant, Summary: at(455.8), Target: 455,
@@ -34,6 +35,10 @@ func TestWaferSentence(t *testing.T) {
 		{"no summary", func(f *WaferFound) { f.Summary = nil }, "where it sits cannot be told"},
 		{"no figures", func(f *WaferFound) { f.Quantity, f.Summary = quantity.Quantity{}, nil }, "where it sits cannot be told, since its figures are still being made;"},
 		{"no wavelength", func(f *WaferFound) { f.Quantity, f.Target, f.Summary = voltage, nan, at(3.1234) }, "has a median forward voltage of 3.12 V;"},
+		{"category", func(f *WaferFound) {
+			f.Quantity, f.Target = hardBin, nan
+			f.Summary = &uniformity.Summary{N: 1456, Median: 1, Histogram: uniformity.Histogram{Low: 0.5, Width: 1, Counts: []int{1389, 67}}}
+		}, "has 95 % of its 1,456 dies in tester hard bin 1;"},
 		{"no spec", func(f *WaferFound) { f.Spec = "" }, "how much of it sells cannot be told, since no specification applies to it."},
 		{"no dies", func(f *WaferFound) { f.Denominator = 0 }, "under harbour-blue v3 cannot be told, since there are no dies to count."},
 		{"measured dies only", func(f *WaferFound) { f.OverLayout = false }, "71 % of 14,516 measured dies sell"},

@@ -64,6 +64,12 @@ func (f WaferFound) sayPosition(s *Sentence) {
 		return
 	}
 	off := f.Summary.Median - f.Target
+	if code, n, ok := commonest(f.Summary.Histogram); ok && q.Scale == quantity.Category {
+		s.say(" has ")
+		s.stress(Percent(n, f.Summary.N), f.QuantityHref)
+		s.say(" of its " + Count(f.Summary.N) + " dies in " + label + " " + Number(code, 0))
+		return
+	}
 	if math.IsNaN(off) || q.Scale != quantity.Deviation {
 		s.say(" has a median " + label + " of ")
 		s.stress(With(f.Summary.Median, decimals, q.Unit), f.QuantityHref)
@@ -88,6 +94,18 @@ func (f WaferFound) sayPosition(s *Sentence) {
 		s.stress(amount+" short", f.QuantityHref)
 		s.say(" of its " + target)
 	}
+}
+
+// commonest is the code that most dies of a category have; ok is false when the
+// histogram's cells hold more than one code.
+func commonest(h uniformity.Histogram) (code float64, n int, ok bool) {
+	for i, count := range h.Counts {
+		if count > n {
+			// A cell of one code may begin at it or half a step before it.
+			code, n = math.Ceil(h.Low+float64(i)*h.Width), count
+		}
+	}
+	return code, n, h.Width == 1 && n > 0
 }
 
 func (f WaferFound) sayYield(s *Sentence) {

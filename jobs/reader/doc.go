@@ -97,9 +97,10 @@
 // unless the profile says otherwise, with lot and station from the MIR. Parts are
 // told apart by head and site while they are open, and by X and Y afterwards: of
 // a die that was tested again the last result counts. Without a profile every
-// parametric test becomes a declared quantity named t<number>_<text>; hard_bin,
-// soft_bin and test_time_ms are always there when the file states them. Times are
-// in the tester's zone: the profile's, else Input.Zone, with a notice.
+// parametric test becomes a declared quantity named t<number>_<text>_<unit>;
+// tester_pass (1 or 0), hard_bin, soft_bin and test_time_ms are always there when
+// the file states them. Times are in the tester's zone: the profile's, else
+// Input.Zone, with a notice.
 //
 // # Run sheets
 //

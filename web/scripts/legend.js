@@ -58,7 +58,7 @@ function shades(ctx, scale, wide, palette) {
 }
 
 function marks(ctx, q, wide, palette) {
-  const steps = wide > 420 ? [0, 0.25, 0.5, 0.75, 1] : [0, 0.5, 1];
+  const steps = ticks(q, wide);
   ctx.font = '15px system-ui, sans-serif';
   ctx.fillStyle = ctx.strokeStyle = `#${palette.ink}`;
   for (const t of steps) {
@@ -72,6 +72,18 @@ function marks(ctx, q, wide, palette) {
     ctx.fillText(withUnit(number(v, q.decimals > 1 && q.high - q.low > 1 ? q.decimals - 1 : q.decimals), t === 0 || t === 1 || t === 0.5 ? q.unit : ''), x, 84);
     if (q.scale === 'deviation' && t % 0.5 === 0) ctx.fillText(['short', 'target', 'long'][t * 2], x, 100);
   }
+}
+
+// ticks are where the scale is labelled, from 0 to 1: codes of a category only
+// at whole numbers.
+export function ticks(q, wide) {
+  if (q.scale !== 'category') return wide > 420 ? [0, 0.25, 0.5, 0.75, 1] : [0, 0.5, 1];
+  const span = q.high - q.low;
+  if (!(span >= 1)) return [0.5];
+  const step = Math.max(1, Math.ceil(span / 8));
+  const out = [];
+  for (let v = 0; v <= span; v += step) out.push(v / span);
+  return out;
 }
 
 function words(shaded, q, map) {

@@ -52,7 +52,7 @@ function drawBar(ctx, view, size, palette, ratio) {
   const px = length * view.pxPerMM(size);
   const left = 12 * ratio;
   const y = size - 14 * ratio;
-  const text = `${number(length, length < 1 ? 2 : 0)}\u202fmm`;
+  const text = `${number(length, length < 1 ? 2 : 0)}\u202f${view.layout.length_unit}`;
   ctx.font = `${15 * ratio}px system-ui, sans-serif`;
   ctx.fillStyle = `#${palette.paper}`;
   ctx.globalAlpha = 0.85;

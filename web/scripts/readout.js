@@ -23,7 +23,7 @@ export function writeReadout(map, spoken) {
   const radius = Math.hypot(mmX, mmY);
   const list = document.createElement('dl');
   row(list, 'Die', `x ${number(x)}, y ${number(y)}`);
-  row(list, 'Place', withUnit(`${signed(mmX, 2)}, ${signed(mmY, 2)}`, 'mm'), `${number(radius, 1)}\u202fmm from the centre`);
+  row(list, 'Place', withUnit(`${signed(mmX, 2)}, ${signed(mmY, 2)}`, map.data.layout.length_unit), `${number(radius, 1)}\u202f${map.data.layout.length_unit} from the centre`);
   const i = map.grid.find(x, y);
   if (i < 0) {
     const inside = radius <= map.data.layout.diameter / 2;
