@@ -258,6 +258,21 @@ func TestLoadByHand(t *testing.T) {
 	}
 }
 
+func TestLoadByHandIntoARunningServer(t *testing.T) {
+	t.Parallel()
+	c := testConfig(t)
+	app := startApp(t, c, func(*App) {})
+	file := filepath.Join(t.TempDir(), "one.csv")
+	if err := os.WriteFile(file, []byte(tinyCSV), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	out, said, err := runCommand(t, "load", "--data", c.Data, file)
+	if err != nil || !strings.Contains(out, "stored 1") {
+		t.Fatalf("%v: %s%s", err, out, said)
+	}
+	page(t, app.URL()+"/wafers/T-1", http.StatusOK)
+}
+
 func TestCalcSummary(t *testing.T) {
 	t.Parallel()
 	file := filepath.Join(t.TempDir(), "values.csv")

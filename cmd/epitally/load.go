@@ -16,6 +16,7 @@ import (
 
 	"epitally/analytics"
 	"epitally/db"
+	"epitally/db/localpg"
 	"epitally/jobs"
 	"epitally/jobs/reader"
 )
@@ -114,6 +115,12 @@ func filesUnder(paths []string) ([]string, error) {
 func loadFiles(ctx context.Context, c *console, config Config, zone *time.Location, files []string, profiles []reader.Profile) error {
 	log := newLogger(c.err, config.LogLevel)
 	cluster, store, err := openStore(ctx, config, log)
+	if errors.Is(err, localpg.ErrInUse) { // a server runs on this folder: load into its database
+		if url, ok := localpg.Attach(filepath.Join(config.Data, "postgres")); ok {
+			config.DatabaseURL = secret(url)
+			cluster, store, err = openStore(ctx, config, log)
+		}
+	}
 	if err != nil {
 		return err
 	}
