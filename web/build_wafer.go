@@ -240,7 +240,8 @@ func mapCells(s *SpecInput) []MapCell {
 func (in *WaferInput) measurementOptions() []Option {
 	var out []Option
 	for _, m := range in.All {
-		label := m.Kind + ", " + Moment(m.MeasuredAt, in.Zone)
+		// Without the zone, which the figures below say: a select cuts long labels.
+		label := m.Kind + ", " + m.MeasuredAt.In(in.Zone).Format("2006-01-02 15:04")
 		if !m.Current {
 			label += ", older"
 		}
