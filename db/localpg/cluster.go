@@ -100,6 +100,10 @@ func Start(ctx context.Context, o Options) (_ *Cluster, err error) {
 	if err = c.endLeftOver(ctx); err != nil {
 		return nil, err
 	}
+	// Only now: a server that is still ending removes files under the walk.
+	if err = c.account.own(c.serverDir); err != nil {
+		return nil, err
+	}
 	go c.supervise()
 	if err = c.awaitReady(ctx); err == nil {
 		err = c.EnsureDatabase(ctx, cmp.Or(o.Database, defaultDatabase))

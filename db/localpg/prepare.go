@@ -42,7 +42,7 @@ func (c *Cluster) prepare(ctx context.Context) error {
 			return fmt.Errorf("data folder %s: %w", c.dir, err)
 		}
 	}
-	return c.account.own(c.serverDir)
+	return nil
 }
 
 // initialise makes the cluster under another name and renames it when it is
