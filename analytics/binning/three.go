@@ -1,7 +1,5 @@
 package binning
 
-import "encoding/binary"
-
 // threeLanes reports whether the call at work is the common one of re-binning
 // many wafers out of the database: three quantities as they are stored, and no
 // rule that spans quantities.
@@ -18,39 +16,33 @@ func (b *Binner) threeLanes() bool {
 }
 
 // countThree counts the dies per code without writing a code down: join, settle
-// and count in one pass, eight dies at a time. Neighbours mostly share a bin, so
-// odd dies have counts of their own and do not wait for the even ones' to be
-// written.
+// and count in one pass. Neighbours mostly share a bin, so every other die has
+// counts of its own and does not wait for the last one's to be written.
 func (b *Binner) countThree(counts []int) {
 	x, y, z := &b.columns[0], &b.columns[1], &b.columns[2]
 	tx, ty, tz := &x.table.verdicts, &y.table.verdicts, &z.table.verdicts
+	n := len(x.lo)
+	xl, xh, yl, yh, zl, zh := x.lo, x.hi[:n], y.lo[:n], y.hi[:n], z.lo[:n], z.hi[:n]
 	if cap(b.odd) < len(counts) {
 		b.odd = make([]int, len(counts))
 	}
 	odd := b.odd[:len(counts)]
 	clear(odd)
 	i := 0
-	for ; i+8 <= len(x.lo); i += 8 {
-		xl, xh := binary.LittleEndian.Uint64(x.lo[i:]), binary.LittleEndian.Uint64(x.hi[i:])
-		yl, yh := binary.LittleEndian.Uint64(y.lo[i:]), binary.LittleEndian.Uint64(y.hi[i:])
-		zl, zh := binary.LittleEndian.Uint64(z.lo[i:]), binary.LittleEndian.Uint64(z.hi[i:])
-		for range 4 {
-			counts[code(tx[pair(xl, xh)], ty[pair(yl, yh)], tz[pair(zl, zh)])]++
-			odd[code(tx[pair(xl>>8, xh>>8)], ty[pair(yl>>8, yh>>8)], tz[pair(zl>>8, zh>>8)])]++
-			xl, xh, yl, yh, zl, zh = xl>>16, xh>>16, yl>>16, yh>>16, zl>>16, zh>>16
-		}
+	for ; i+1 < len(xl); i += 2 {
+		counts[code(tx[pair(xl[i], xh[i])], ty[pair(yl[i], yh[i])], tz[pair(zl[i], zh[i])])]++
+		odd[code(tx[pair(xl[i+1], xh[i+1])], ty[pair(yl[i+1], yh[i+1])], tz[pair(zl[i+1], zh[i+1])])]++
 	}
-	for ; i < len(x.lo); i++ {
-		at := func(c *column) uint16 { return uint16(c.hi[i])<<8 | uint16(c.lo[i]) }
-		counts[code(tx[at(x)], ty[at(y)], tz[at(z)])]++
+	if i < len(xl) {
+		counts[code(tx[pair(xl[i], xh[i])], ty[pair(yl[i], yh[i])], tz[pair(zl[i], zh[i])])]++
 	}
 	for c, n := range odd {
 		counts[c] += n
 	}
 }
 
-// pair puts the lowest bytes of two words together.
-func pair(low, high uint64) uint16 { return uint16(high)<<8 | uint16(low&0xff) }
+// pair puts a low and a high byte together.
+func pair(low, high byte) uint16 { return uint16(high)<<8 | uint16(low) }
 
 // code is the code that three verdicts come to: that of the largest where one
 // of them rejects, else their sum.
