@@ -24,6 +24,7 @@ func (l *Load) PutRunSheet(ctx context.Context, rows []NewRunSheetRow) (err erro
 	l.mu.Lock()
 	defer l.mu.Unlock()
 	batch := &pgx.Batch{}
+	batch.Queue(lockDocuments)
 	wafers := make([]string, len(rows))
 	for i, r := range rows {
 		wafers[i] = r.Wafer
@@ -80,6 +81,7 @@ func (l *Load) PutCatalogue(ctx context.Context, c Catalogue) (err error) {
 	l.mu.Lock()
 	defer l.mu.Unlock()
 	batch := &pgx.Batch{}
+	batch.Queue(lockDocuments)
 	var products, recipes []string
 	for _, p := range c.Products {
 		if err := p.Layout.Validate(); err != nil {

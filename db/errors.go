@@ -36,7 +36,7 @@ func kindOf(err error) error {
 	}
 	var connect *pgconn.ConnectError
 	var network net.Error
-	if errors.As(err, &connect) || errors.As(err, &network) || pgconn.SafeToRetry(err) || errors.Is(err, net.ErrClosed) || isEOF(err) {
+	if errors.As(err, &connect) || errors.As(err, &network) || pgconn.SafeToRetry(err) || brokenOff(err) {
 		return analytics.ErrUnavailable
 	}
 	return nil
@@ -49,6 +49,7 @@ func kindOfCode(pg *pgconn.PgError) error {
 	case pg.Code == "23505", pg.Code == "23503":
 		return analytics.ErrConflict
 	case pg.Code == "40P01", pg.Code == "40001", pg.Code == "55P03", // deadlock, serialization, lock timeout
+		pg.Code == "57014",                                         // the statement timeout
 		pg.Code == "57P01", pg.Code == "57P02", pg.Code == "57P03", // the server stops, crashed, or starts
 		strings.HasPrefix(pg.Code, "53"), // out of disk, memory, connections
 		strings.HasPrefix(pg.Code, "08"): // connection

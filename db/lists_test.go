@@ -296,3 +296,68 @@ func TestRunSheetsAndCataloguesMayComeLater(t *testing.T) {
 		t.Errorf("products: %v, %+v", err, products)
 	}
 }
+
+// TestADocumentWaitsForWhatIsDerivedWithoutIt stores a specification while a
+// load that has not seen it is under way: the load's measurement must not keep
+// numbers that lack it without being marked.
+func TestADocumentWaitsForWhatIsDerivedWithoutIt(t *testing.T) {
+	t.Parallel()
+	url := dbtest.URL(t)
+	s, err := db.Open(ctx, db.Config{URL: url})
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer s.Close()
+	document := func(n int, put func(*db.Load) error) error {
+		l, err := s.BeginLoad(ctx)
+		if err == nil {
+			if err = put(l); err == nil {
+				_, err = l.Commit(ctx, source("document", n))
+			}
+			l.Rollback(ctx)
+		}
+		return err
+	}
+	if err := document(1, func(l *db.Load) error {
+		return l.PutRunSheet(ctx, []db.NewRunSheetRow{{Wafer: "W-1", Product: "gannet-1"}})
+	}); err != nil {
+		t.Fatal(err)
+	}
+	l, err := s.BeginLoad(ctx)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if c, err := l.WaferContext(ctx, "W-1", "probe"); err != nil || len(c.Specs) != 0 {
+		t.Fatalf("%v, %d specifications; want none yet", err, len(c.Specs))
+	}
+	stored := make(chan error, 1)
+	go func() {
+		stored <- document(2, func(l *db.Load) error {
+			_, err := l.PutSpec(ctx, db.Spec{Name: "harbour", Kind: "probe", Products: []string{"gannet-1"}, Document: "one"})
+			return err
+		})
+	}()
+	conn, err := pgx.Connect(ctx, url)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer conn.Close(ctx)
+	for waiting := false; !waiting; {
+		if err := conn.QueryRow(ctx, `SELECT EXISTS (SELECT FROM pg_locks WHERE locktype = 'advisory' AND NOT granted
+			AND database = (SELECT oid FROM pg_database WHERE datname = current_database()))`).Scan(&waiting); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if _, err := l.PutMeasurement(ctx, probe(t, "W-1", noon)); err != nil {
+		t.Fatal(err)
+	}
+	if _, err := l.Commit(ctx, source("readings", 3)); err != nil {
+		t.Fatal(err)
+	}
+	if err := <-stored; err != nil {
+		t.Fatal(err)
+	}
+	if stale, err := s.StaleMeasurements(ctx, 10); err != nil || len(stale) != 1 {
+		t.Errorf("%d stale, %v; want the measurement that was derived without the specification", len(stale), err)
+	}
+}

@@ -29,6 +29,7 @@ type Load struct {
 	grids    map[[32]byte]int64 // grids made or found; the store learns them at the commit
 	specs    map[specsKey][]Spec
 	targets  map[string][]Target
+	shares   bool // documents are held
 	declared map[string]bool
 	taken    int
 }
@@ -68,6 +69,12 @@ func (l *Load) WaferContext(ctx context.Context, wafer, kind string) (c *WaferCo
 	defer wrap(&err, "wafer %s", wafer)
 	l.mu.Lock()
 	defer l.mu.Unlock()
+	if !l.shares {
+		if _, err := l.tx.Exec(ctx, shareDocuments); err != nil {
+			return nil, err
+		}
+		l.shares = true
+	}
 	c = &WaferContext{Wafer: Wafer{Name: wafer}}
 	w, err := scanWafer(l.tx.QueryRow(ctx, selectWafer+` WHERE w.name = $1 FOR NO KEY UPDATE OF w`, wafer))
 	if errors.Is(err, pgx.ErrNoRows) {

@@ -63,8 +63,8 @@ func (l *Load) PutSpec(ctx context.Context, s Spec) (out Spec, err error) {
 	defer wrap(&err, "store specification %q", s.Name)
 	l.mu.Lock()
 	defer l.mu.Unlock()
-	// Two versions stored at once take turns, so that numbers have no gap.
-	if _, err := l.tx.Exec(ctx, `SELECT pg_advisory_xact_lock(hashtext('epitally.spec'), hashtext($1))`, s.Name); err != nil {
+	// Versions stored at once take turns too, so that their numbers have no gap.
+	if _, err := l.tx.Exec(ctx, lockDocuments); err != nil {
 		return out, err
 	}
 	rows, err := l.tx.Query(ctx, selectSpec+` WHERE name = $1 AND latest`, s.Name)

@@ -6,8 +6,9 @@ import (
 	"fmt"
 	"io"
 	"io/fs"
-	"strings"
+	"net"
 	"sync"
+	"syscall"
 	"time"
 
 	"github.com/jackc/pgx/v5"
@@ -154,6 +155,28 @@ func (s *Store) inTx(ctx context.Context, fn func(pgx.Tx) error) error {
 	return pgx.BeginFunc(ctx, s.pool, fn)
 }
 
-func isEOF(err error) bool {
-	return errors.Is(err, io.EOF) || errors.Is(err, io.ErrUnexpectedEOF) || strings.HasSuffix(err.Error(), "broken pipe")
+// brokenOff reports whether the connection ended under a query.
+func brokenOff(err error) bool {
+	return errors.Is(err, io.EOF) || errors.Is(err, io.ErrUnexpectedEOF) || errors.Is(err, net.ErrClosed) ||
+		errors.Is(err, syscall.EPIPE) || errors.Is(err, syscall.ECONNRESET)
+}
+
+// Documents (run sheets, catalogues, specifications) and what is derived under
+// them take turns: whoever derives holds this lock shared until it has stored,
+// so that a document that marks measurements stale sees every one of them.
+const (
+	lockDocuments  = `SELECT pg_advisory_xact_lock(hashtext('epitally.documents'))`
+	shareDocuments = `SELECT pg_advisory_xact_lock_shared(hashtext('epitally.documents'))`
+)
+
+// HoldDocuments keeps documents as they are while fn derives numbers under them
+// and stores these.
+func (s *Store) HoldDocuments(ctx context.Context, fn func() error) (err error) {
+	defer wrap(&err, "hold documents")
+	return s.inTx(ctx, func(tx pgx.Tx) error {
+		if _, err := tx.Exec(ctx, shareDocuments); err != nil {
+			return err
+		}
+		return fn()
+	})
 }

@@ -199,6 +199,10 @@ func (l *Loader) Recompute(ctx context.Context, id int64) (err error) {
 			err = fmt.Errorf("recompute measurement %d: %w", id, err)
 		}
 	}()
+	return l.store.HoldDocuments(ctx, func() error { return l.recompute(ctx, id) })
+}
+
+func (l *Loader) recompute(ctx context.Context, id int64) error {
 	m, err := l.store.Measurement(ctx, id)
 	if err != nil {
 		return err
