@@ -35,6 +35,9 @@ func load(ctx context.Context, c *console, args []string) error {
 	flags.StringArrayVar(&o.profileFiles, "profile", nil, "reading profile `file` to read delimited text and STDF by (may be repeated)")
 	flags.BoolVar(&o.dryRun, "dry-run", false, "read everything, store nothing, and show what each file would give")
 	flags.BoolVar(&o.json, "json", false, "with --dry-run: print JSON")
+	for _, serving := range []string{"listen", "drop", "scan", "settle-seconds", "workers", "stop-seconds"} {
+		flags.MarkHidden(serving) // they may stand in the settings' file, and mean nothing here
+	}
 	if err := config.resolve(flags, args, os.Getenv); err != nil {
 		return err
 	}
