@@ -32,8 +32,12 @@ type specBinner struct {
 	binner *binning.Binner
 }
 
-// maxFrames bounds the cache: a frame of a 1-million-die grid is a few MB.
-const maxFrames = 8
+// These bound the caches: a frame of a 1-million-die grid is a few MB, and so are
+// the tables of one specification.
+const (
+	maxFrames  = 8
+	maxBinners = 16
+)
 
 func newDeriver() *deriver {
 	return &deriver{frames: map[frameKey]*uniformity.Frame{}, binners: map[int64]*specBinner{}}
@@ -113,6 +117,9 @@ func (d *deriver) binner(stored db.Spec) (*specBinner, error) {
 	spec, err := binning.Parse([]byte(stored.Document))
 	if err != nil {
 		return nil, analytics.WithSource(err, fmt.Sprintf("specification %s version %d", stored.Name, stored.Version))
+	}
+	if len(d.binners) >= maxBinners {
+		clear(d.binners)
 	}
 	sb := &specBinner{spec: spec, binner: spec.NewBinner()}
 	d.binners[stored.ID] = sb
