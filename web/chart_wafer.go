@@ -3,6 +3,7 @@ package web
 import (
 	"fmt"
 	"math"
+	"strings"
 
 	"github.com/go-echarts/go-echarts/v2/charts"
 	"github.com/go-echarts/go-echarts/v2/opts"
@@ -46,10 +47,11 @@ func HistogramChart(p Plotted) *Chart {
 		data = append(data, opts.BarData{Name: words, Value: []float64{round(low+h.Width/2, 9), float64(n)}})
 		c.Table.add(numberCell(low, decimals), numberCell(high, decimals), countCell(n))
 	}
-	c.Caption = fmt.Sprintf("%s dies with a value, in steps of %s.", Count(p.Summary.N), With(h.Width, decimals, q.Unit))
+	c.Caption = fmt.Sprintf("%s dies with a value, in steps of %s", Count(p.Summary.N), With(h.Width, decimals, q.Unit))
 	if h.Below+h.Above > 0 {
-		c.Caption += fmt.Sprintf(" Not drawn: %s below and %s above.", Count(h.Below), Count(h.Above))
+		c.Caption += fmt.Sprintf("; not drawn: %s below and %s above", Count(h.Below), Count(h.Above))
 	}
+	c.Caption = strings.TrimSuffix(c.Caption, ".") + "." // a unit may end in one
 	c.Label = "Histogram of " + lowerFirst(q.Label) + ". " + c.Caption
 	bar := charts.NewBar()
 	low, high := h.Low, h.Low+float64(len(h.Counts))*h.Width

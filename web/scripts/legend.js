@@ -69,9 +69,16 @@ function marks(ctx, q, wide, palette) {
     ctx.lineTo(x, 70);
     ctx.stroke();
     ctx.textAlign = t === 0 ? 'left' : t === 1 ? 'right' : 'center';
-    ctx.fillText(withUnit(number(v, q.decimals > 1 && q.high - q.low > 1 ? q.decimals - 1 : q.decimals), t === 0 || t === 1 || t === 0.5 ? q.unit : ''), x, 84);
+    ctx.fillText(withUnit(number(v, decimalsFor(q)), t === 0 || t === 1 || t === 0.5 ? q.unit : ''), x, 84);
     if (q.scale === 'deviation' && t % 0.5 === 0) ctx.fillText(['short', 'target', 'long'][t * 2], x, 100);
   }
+}
+
+// decimalsFor are those that tell a hundredth of the scale apart, and no more
+// than were measured.
+export function decimalsFor(q) {
+  const span = q.high - q.low;
+  return span > 0 ? Math.min(q.decimals, Math.max(0, Math.ceil(-Math.log10(span / 100)))) : q.decimals;
 }
 
 // ticks are where the scale is labelled, from 0 to 1: codes of a category only
