@@ -15,6 +15,7 @@ import (
 	"time"
 
 	"github.com/jackc/pgx/v5"
+	"go.uber.org/goleak"
 
 	"epitally/analytics"
 )
@@ -33,7 +34,7 @@ func TestMain(m *testing.M) {
 		fmt.Println(c.URL("epitally"))
 		select {} // until killed
 	}
-	os.Exit(m.Run())
+	goleak.VerifyTestMain(m)
 }
 
 func start(t *testing.T, dir string) *Cluster {
