@@ -107,7 +107,7 @@ func (c *Cluster) runOnce() error {
 func (c *Cluster) settings() []string {
 	s := []string{
 		"max_connections=100",
-		"shared_buffers=128MB",
+		"shared_buffers=64MB",
 		"work_mem=16MB",
 		"wal_compression=lz4",
 		"default_toast_compression=lz4",
