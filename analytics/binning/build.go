@@ -5,6 +5,8 @@ import (
 	"math/big"
 	"slices"
 	"strings"
+
+	"epitally/analytics/yamldoc"
 )
 
 // build works a draft into codes and verdicts.
@@ -31,7 +33,7 @@ func (d *draft) build() (*Spec, error) {
 }
 
 // binsAt gives the place for faults about bin names.
-func (d *draft) binsAt() node {
+func (d *draft) binsAt() yamldoc.Node {
 	if d.patternN.Node != nil {
 		return d.patternN
 	}
@@ -56,11 +58,11 @@ func (d *draft) nameBins() error {
 		name := d.binName(parts, i)
 		switch {
 		case len(name) > 4*maxName:
-			return d.binsAt().fault("", "the bin name %q is over %d bytes", name, 4*maxName)
+			return d.binsAt().Fault("", "the bin name %q is over %d bytes", name, 4*maxName)
 		case names[name]:
-			return d.binsAt().fault("name every axis in the pattern, and give its cells names that cannot run together", "two bins are named %q", name)
+			return d.binsAt().Fault("name every axis in the pattern, and give its cells names that cannot run together", "two bins are named %q", name)
 		case name == UntestedName:
-			return d.binsAt().fault("", "%q cannot name a bin", name)
+			return d.binsAt().Fault("", "%q cannot name a bin", name)
 		}
 		names[name] = true
 		class := Unsellable
@@ -76,7 +78,7 @@ func (d *draft) nameBins() error {
 	}
 	for j, p := range d.sellable {
 		if !sold[j] {
-			return p.at.fault("* stands for any text; the first bin is "+d.spec.cells[0].Name, "the pattern %q matches no bin", p.text)
+			return p.at.Fault("* stands for any text; the first bin is "+d.spec.cells[0].Name, "the pattern %q matches no bin", p.text)
 		}
 	}
 	return nil
@@ -93,18 +95,18 @@ func (d *draft) splitPattern() ([]part, error) {
 	for rest := d.pattern; rest != ""; {
 		literal, after, open := strings.Cut(rest, "{")
 		if strings.Contains(literal, "}") {
-			return nil, d.binsAt().fault("", "a } without its { in the bin name %q", d.pattern)
+			return nil, d.binsAt().Fault("", "a } without its { in the bin name %q", d.pattern)
 		}
 		if !open {
 			return append(parts, part{literal, -1}), nil
 		}
 		name, behind, closed := strings.Cut(after, "}")
 		if !closed {
-			return nil, d.binsAt().fault("", "a { without its } in the bin name %q", d.pattern)
+			return nil, d.binsAt().Fault("", "a { without its } in the bin name %q", d.pattern)
 		}
 		axis := slices.IndexFunc(d.axes, func(a draftAxis) bool { return a.Name == name })
 		if axis < 0 {
-			return nil, d.binsAt().fault("", "the bin name %q refers to the axis %q, which does not exist", d.pattern, name)
+			return nil, d.binsAt().Fault("", "the bin name %q refers to the axis %q, which does not exist", d.pattern, name)
 		}
 		parts, rest = append(parts, part{literal, axis}), behind
 	}
@@ -156,9 +158,9 @@ func (d *draft) addReasons() (map[string]uint32, error) {
 		bins[c.Name] = true
 	}
 	codes := map[string]uint32{}
-	add := func(reason string, at node) error {
+	add := func(reason string, at yamldoc.Node) error {
 		if bins[reason] {
-			return at.fault("", "%q names a bin and a reject reason", reason)
+			return at.Fault("", "%q names a bin and a reject reason", reason)
 		}
 		if _, known := codes[reason]; !known {
 			codes[reason] = uint32(len(d.spec.cells))
@@ -326,7 +328,7 @@ func (d *draft) compileTerm(r draftRule, t term, v uint32) error {
 	}
 	bit := len(s.terms)
 	if bit == 64 {
-		return r.when.fault("", "the rules join quantities by \"and\" in more than 64 alternatives")
+		return r.when.Fault("", "the rules join quantities by \"and\" in more than 64 alternatives")
 	}
 	s.terms = append(s.terms, v)
 	for i := range s.plans {

@@ -8,6 +8,7 @@ import (
 
 	"epitally/analytics"
 	"epitally/analytics/quantity"
+	"epitally/analytics/yamldoc"
 
 	"github.com/goccy/go-yaml/ast"
 )
@@ -29,7 +30,7 @@ var nameRule = regexp.MustCompile(`^[A-Za-z0-9][A-Za-z0-9_.-]{0,62}$`)
 // Parse reads a specification document (YAML, see the package comment). Every
 // error is an *analytics.Fault with line, column and key.
 func Parse(document []byte) (*Spec, error) {
-	root, err := readDocument(document)
+	root, err := yamldoc.Parse(document, yamldoc.Form{Remedy: "write one specification per document", AtKeys: true})
 	if err != nil {
 		return nil, err
 	}
@@ -46,9 +47,9 @@ type draft struct {
 	rules    []draftRule
 	terms    int // of all rules
 	axes     []draftAxis
-	root     node
+	root     yamldoc.Node
 	pattern  string
-	patternN node
+	patternN yamldoc.Node
 	all      bool // every bin is sellable
 	sellable []draftPattern
 }
@@ -56,7 +57,7 @@ type draft struct {
 type draftRule struct {
 	reason string
 	terms  []term
-	when   node
+	when   yamldoc.Node
 }
 
 type draftAxis struct {
@@ -64,40 +65,40 @@ type draftAxis struct {
 	edges               []*big.Rat
 	guard               *big.Rat
 	below, above, inner string // reject reasons; inner is that of the guard band
-	at                  node
+	at                  yamldoc.Node
 }
 
 type draftPattern struct {
 	text string
-	at   node
+	at   yamldoc.Node
 }
 
-func parseSpec(root node) (*draft, error) {
-	f, err := root.fields("specification!", "title", "kind!", "products", "rejects", "axes", "bins")
+func parseSpec(root yamldoc.Node) (*draft, error) {
+	f, err := root.Fields("specification!", "title", "kind!", "products", "rejects", "axes", "bins")
 	if err != nil {
 		return nil, err
 	}
 	d := &draft{spec: &Spec{}, root: root}
-	if d.spec.Name, err = f["specification"].text(maxName); err != nil {
+	if d.spec.Name, err = f["specification"].TextWithin(maxName); err != nil {
 		return nil, err
 	}
 	if !nameRule.MatchString(d.spec.Name) {
-		return nil, f["specification"].fault("use letters, digits, -, _ and .", "%q cannot name a specification", d.spec.Name)
+		return nil, f["specification"].Fault("use letters, digits, -, _ and .", "%q cannot name a specification", d.spec.Name)
 	}
-	if d.spec.Kind, err = f["kind"].text(maxName); err != nil {
+	if d.spec.Kind, err = f["kind"].TextWithin(maxName); err != nil {
 		return nil, err
 	}
 	if !quantity.ValidName(d.spec.Kind) {
-		return nil, f["kind"].fault("use the measurement's kind, such as probe or pl", "%q cannot name a kind", d.spec.Kind)
+		return nil, f["kind"].Fault("use the measurement's kind, such as probe or pl", "%q cannot name a kind", d.spec.Kind)
 	}
 	if n, ok := f["title"]; ok {
-		if d.spec.Title, err = n.text(maxText); err != nil {
+		if d.spec.Title, err = n.TextWithin(maxText); err != nil {
 			return nil, err
 		}
 	}
 	for _, part := range []struct {
 		key  string
-		read func(*draft, node) error
+		read func(*draft, yamldoc.Node) error
 	}{{"products", (*draft).readProducts}, {"rejects", (*draft).readRejects}, {"axes", (*draft).readAxes}, {"bins", (*draft).readBins}} {
 		if n, ok := f[part.key]; ok {
 			if err := part.read(d, n); err != nil {
@@ -106,24 +107,24 @@ func parseSpec(root node) (*draft, error) {
 		}
 	}
 	if len(d.rules) == 0 && len(d.axes) == 0 {
-		return nil, root.fault("add rejects, axes or both", "the specification tests nothing")
+		return nil, root.Fault("add rejects, axes or both", "the specification tests nothing")
 	}
 	return d, nil
 }
 
-func (d *draft) readProducts(n node) error {
-	items, err := n.items(maxRules)
+func (d *draft) readProducts(n yamldoc.Node) error {
+	items, err := n.Items(maxRules)
 	if err != nil {
 		return err
 	}
 	seen := map[string]bool{}
 	for _, item := range items {
-		name, err := item.text(maxText)
+		name, err := item.TextWithin(maxText)
 		if err != nil {
 			return err
 		}
 		if seen[name] {
-			return item.fault("", "product %q stands twice", name)
+			return item.Fault("", "product %q stands twice", name)
 		}
 		seen[name] = true
 		d.spec.Products = append(d.spec.Products, name)
@@ -131,13 +132,13 @@ func (d *draft) readProducts(n node) error {
 	return nil
 }
 
-func (d *draft) readRejects(n node) error {
-	items, err := n.items(maxRules)
+func (d *draft) readRejects(n yamldoc.Node) error {
+	items, err := n.Items(maxRules)
 	if err != nil {
 		return err
 	}
 	for _, item := range items {
-		f, err := item.fields("reason!", "when!")
+		f, err := item.Fields("reason!", "when!")
 		if err != nil {
 			return err
 		}
@@ -145,7 +146,7 @@ func (d *draft) readRejects(n node) error {
 		if r.reason, err = reason(f["reason"]); err != nil {
 			return err
 		}
-		text, err := f["when"].text(maxWhen)
+		text, err := f["when"].TextWithin(maxWhen)
 		if err != nil {
 			return err
 		}
@@ -163,18 +164,18 @@ func (d *draft) readRejects(n node) error {
 	return nil
 }
 
-func reason(n node) (string, error) {
-	s, err := n.text(maxName)
+func reason(n yamldoc.Node) (string, error) {
+	s, err := n.TextWithin(maxName)
 	if err == nil && (s == UntestedName || strings.ContainsAny(s, "\n\t")) {
-		return "", n.fault("", "%q cannot be a reject reason", s)
+		return "", n.Fault("", "%q cannot be a reject reason", s)
 	}
 	return s, err
 }
 
 // conditionFault moves the fault's column to the place in the text where that
 // can be told: text on one line, right after the value's first character.
-func conditionFault(n node, text string, wrong *conditionError) error {
-	f := n.fault(wrong.remedy, "%s", wrong.problem)
+func conditionFault(n yamldoc.Node, text string, wrong *conditionError) error {
+	f := n.Fault(wrong.remedy, "%s", wrong.problem)
 	t := n.GetToken()
 	origin := strings.TrimLeft(t.Origin, " ")
 	if lead := strings.Index(origin, text); lead >= 0 && !strings.Contains(text, "\n") && f.Column > 0 {
@@ -185,8 +186,8 @@ func conditionFault(n node, text string, wrong *conditionError) error {
 	return f
 }
 
-func (d *draft) readAxes(n node) error {
-	items, err := n.items(maxAxes)
+func (d *draft) readAxes(n yamldoc.Node) error {
+	items, err := n.Items(maxAxes)
 	if err != nil {
 		return err
 	}
@@ -197,7 +198,7 @@ func (d *draft) readAxes(n node) error {
 			return err
 		}
 		if seen[a.Name] {
-			return item.fault("", "axis %q stands twice", a.Name)
+			return item.Fault("", "axis %q stands twice", a.Name)
 		}
 		seen[a.Name] = true
 		d.axes = append(d.axes, a)
@@ -205,23 +206,23 @@ func (d *draft) readAxes(n node) error {
 	return nil
 }
 
-func readAxis(n node) (a draftAxis, err error) {
-	f, err := n.fields("axis!", "quantity!", "edges!", "names", "below", "above", "guard", "guard_reason")
+func readAxis(n yamldoc.Node) (a draftAxis, err error) {
+	f, err := n.Fields("axis!", "quantity!", "edges!", "names", "below", "above", "guard", "guard_reason")
 	if err != nil {
 		return a, err
 	}
 	a.at = n
-	if a.Name, err = f["axis"].text(maxName); err != nil {
+	if a.Name, err = f["axis"].TextWithin(maxName); err != nil {
 		return a, err
 	}
 	if !nameRule.MatchString(a.Name) {
-		return a, f["axis"].fault("use letters, digits, -, _ and .", "%q cannot name an axis", a.Name)
+		return a, f["axis"].Fault("use letters, digits, -, _ and .", "%q cannot name an axis", a.Name)
 	}
-	if a.Quantity, err = f["quantity"].text(maxName); err != nil {
+	if a.Quantity, err = f["quantity"].TextWithin(maxName); err != nil {
 		return a, err
 	}
 	if !quantity.ValidName(a.Quantity) {
-		return a, f["quantity"].fault("use lower-case letters, digits and underscores, a letter first", "%q cannot name a quantity", a.Quantity)
+		return a, f["quantity"].Fault("use lower-case letters, digits and underscores, a letter first", "%q cannot name a quantity", a.Quantity)
 	}
 	if err := a.readEdges(f["edges"]); err != nil {
 		return a, err
@@ -240,13 +241,13 @@ func readAxis(n node) (a draftAxis, err error) {
 	return a, a.readNames(f)
 }
 
-func (a *draftAxis) readEdges(n node) error {
-	items, err := n.items(maxEdges)
+func (a *draftAxis) readEdges(n yamldoc.Node) error {
+	items, err := n.Items(maxEdges)
 	if err != nil {
 		return err
 	}
 	if len(items) < 2 {
-		return n.fault("", "an axis needs at least two edges")
+		return n.Fault("", "an axis needs at least two edges")
 	}
 	for i, item := range items {
 		v, err := decimalOf(item)
@@ -254,7 +255,7 @@ func (a *draftAxis) readEdges(n node) error {
 			return err
 		}
 		if i > 0 && a.edges[i-1].Cmp(v) >= 0 {
-			return item.fault("list the edges in ascending order", "edge %s does not follow %s", trimmed(v), trimmed(a.edges[i-1]))
+			return item.Fault("list the edges in ascending order", "edge %s does not follow %s", trimmed(v), trimmed(a.edges[i-1]))
 		}
 		a.edges = append(a.edges, v)
 		a.Edges = append(a.Edges, nearest(v))
@@ -262,24 +263,24 @@ func (a *draftAxis) readEdges(n node) error {
 	return nil
 }
 
-func decimalOf(n node) (*big.Rat, error) {
-	text, err := n.text(maxName)
+func decimalOf(n yamldoc.Node) (*big.Rat, error) {
+	text, err := n.TextWithin(maxName)
 	if err != nil {
-		return nil, n.fault("", "expected a decimal number")
+		return nil, n.Fault("", "expected a decimal number")
 	}
 	v, ok := parseDecimal(text)
 	if !ok {
-		return nil, n.fault("", "%q is not a decimal number", text)
+		return nil, n.Fault("", "%q is not a decimal number", text)
 	}
 	return v, nil
 }
 
-func (a *draftAxis) readGuard(f map[string]node) (err error) {
+func (a *draftAxis) readGuard(f map[string]yamldoc.Node) (err error) {
 	a.guard = new(big.Rat)
 	n, ok := f["guard"]
 	if !ok {
 		if at, ok := f["guard_reason"]; ok {
-			return at.fault("", "guard_reason stands without a guard")
+			return at.Fault("", "guard_reason stands without a guard")
 		}
 		return nil
 	}
@@ -287,12 +288,12 @@ func (a *draftAxis) readGuard(f map[string]node) (err error) {
 		return err
 	}
 	if a.guard.Sign() < 0 {
-		return n.fault("", "a guard band cannot be negative")
+		return n.Fault("", "a guard band cannot be negative")
 	}
 	twice := new(big.Rat).Add(a.guard, a.guard)
 	for i := 1; i < len(a.edges); i++ {
 		if width := new(big.Rat).Sub(a.edges[i], a.edges[i-1]); twice.Cmp(width) >= 0 {
-			return n.fault("", "a guard of %s on each side leaves nothing of the cell from %s to %s",
+			return n.Fault("", "a guard of %s on each side leaves nothing of the cell from %s to %s",
 				trimmed(a.guard), trimmed(a.edges[i-1]), trimmed(a.edges[i]))
 		}
 	}
@@ -300,7 +301,7 @@ func (a *draftAxis) readGuard(f map[string]node) (err error) {
 	return nil
 }
 
-func (a *draftAxis) readNames(f map[string]node) error {
+func (a *draftAxis) readNames(f map[string]yamldoc.Node) error {
 	n, ok := f["names"]
 	if !ok {
 		for i := 1; i < len(a.edges); i++ {
@@ -308,24 +309,24 @@ func (a *draftAxis) readNames(f map[string]node) error {
 		}
 		return nil
 	}
-	items, err := n.items(maxEdges)
+	items, err := n.Items(maxEdges)
 	if err != nil {
 		return err
 	}
 	if len(items) != len(a.edges)-1 {
-		return n.fault("give one name per cell, one fewer than edges", "%d names for %d cells", len(items), len(a.edges)-1)
+		return n.Fault("give one name per cell, one fewer than edges", "%d names for %d cells", len(items), len(a.edges)-1)
 	}
 	seen := map[string]bool{}
 	for _, item := range items {
-		name, err := item.text(maxName)
+		name, err := item.TextWithin(maxName)
 		if err != nil {
 			return err
 		}
 		if !nameRule.MatchString(name) {
-			return item.fault("use letters, digits, -, _ and .", "%q cannot name a cell", name)
+			return item.Fault("use letters, digits, -, _ and .", "%q cannot name a cell", name)
 		}
 		if seen[name] {
-			return item.fault("", "name %q stands twice", name)
+			return item.Fault("", "name %q stands twice", name)
 		}
 		seen[name] = true
 		a.Names = append(a.Names, name)
@@ -333,14 +334,14 @@ func (a *draftAxis) readNames(f map[string]node) error {
 	return nil
 }
 
-func (d *draft) readBins(n node) error {
-	f, err := n.fields("name", "sellable")
+func (d *draft) readBins(n yamldoc.Node) error {
+	f, err := n.Fields("name", "sellable")
 	if err != nil {
 		return err
 	}
 	if n, ok := f["name"]; ok {
 		d.patternN = n
-		if d.pattern, err = n.text(maxText); err != nil {
+		if d.pattern, err = n.TextWithin(maxText); err != nil {
 			return err
 		}
 	}
@@ -349,18 +350,18 @@ func (d *draft) readBins(n node) error {
 		d.all = true
 		return nil
 	}
-	if word, err := s.text(maxName); err == nil {
+	if word, err := s.TextWithin(maxName); err == nil {
 		if d.all = word == "all"; !d.all {
-			return s.fault(`write "all" or a list of patterns like "W2*"`, "%q does not say which bins are sellable", word)
+			return s.Fault(`write "all" or a list of patterns like "W2*"`, "%q does not say which bins are sellable", word)
 		}
 		return nil
 	}
-	items, err := s.items(maxRules)
+	items, err := s.Items(maxRules)
 	if err != nil {
 		return err
 	}
 	for _, item := range items {
-		text, err := item.text(maxText)
+		text, err := item.TextWithin(maxText)
 		if err != nil {
 			return err
 		}
@@ -381,8 +382,8 @@ func trimmed(v *big.Rat) string {
 }
 
 // tooLarge is the fault of a specification with more codes than 16 bits hold.
-func tooLarge(n node, problem string) error {
-	f := n.fault("split the specification, or use fewer cells or rules", "%s", problem)
+func tooLarge(n yamldoc.Node, problem string) error {
+	f := n.Fault("split the specification, or use fewer cells or rules", "%s", problem)
 	f.Kind = analytics.ErrTooLarge
 	return f
 }

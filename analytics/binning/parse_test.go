@@ -8,6 +8,7 @@ import (
 	"testing"
 
 	"epitally/analytics"
+	"epitally/analytics/yamldoc"
 )
 
 func TestParseNamesEveryCode(t *testing.T) {
@@ -138,7 +139,7 @@ func TestParseLimits(t *testing.T) {
 	if _, err := Parse([]byte(document)); !errors.Is(err, analytics.ErrTooLarge) {
 		t.Errorf("27 million bins: %v", err)
 	}
-	if _, err := Parse(make([]byte, maxDocument+1)); !errors.Is(err, analytics.ErrTooLarge) {
+	if _, err := Parse(make([]byte, yamldoc.MaxBytes+1)); !errors.Is(err, analytics.ErrTooLarge) {
 		t.Errorf("large document: %v", err)
 	}
 	tests := make([]string, 80)

@@ -7,6 +7,7 @@ import (
 	"epitally/analytics"
 	"epitally/analytics/quantity"
 	"epitally/analytics/wafermap"
+	"epitally/analytics/yamldoc"
 )
 
 // Catalogue is what a fab makes: products with their layouts, recipes with their
@@ -47,16 +48,16 @@ const (
 // ParseCatalogue reads a catalogue (YAML, see the package comment). Every error
 // is an *analytics.Fault with line, column and key.
 func ParseCatalogue(document []byte) (Catalogue, error) {
-	root, err := parseYAML(document)
+	root, err := parseDocument(document)
 	if err != nil {
 		return Catalogue{}, err
 	}
-	f, err := root.fields("catalogue!", "products", "recipes", "quantities")
+	f, err := root.Fields("catalogue!", "products", "recipes", "quantities")
 	if err != nil {
 		return Catalogue{}, err
 	}
 	var c Catalogue
-	if c.Name, err = f["catalogue"].name(); err != nil {
+	if c.Name, err = nameIn(f["catalogue"]); err != nil {
 		return Catalogue{}, err
 	}
 	// Quantities first: recipes may name them.
@@ -70,18 +71,18 @@ func ParseCatalogue(document []byte) (Catalogue, error) {
 		return Catalogue{}, err
 	}
 	if len(c.Products)+len(c.Recipes)+len(c.Quantities) == 0 {
-		return Catalogue{}, root.fault("add products, recipes or quantities", "the catalogue holds nothing")
+		return Catalogue{}, root.Fault("add products, recipes or quantities", "the catalogue holds nothing")
 	}
 	return c, nil
 }
 
 // each hands over the entries of a list that may be absent, refusing a name
 // that stands twice.
-func (c *Catalogue) each(list node, add func(node) (named node, name string, err error)) error {
-	if list.Node == nil {
+func (c *Catalogue) each(list yamldoc.Node, add func(yamldoc.Node) (named yamldoc.Node, name string, err error)) error {
+	if !list.Is() {
 		return nil
 	}
-	items, err := list.items(maxEntries)
+	items, err := list.Items(maxEntries)
 	if err != nil {
 		return err
 	}
@@ -92,15 +93,15 @@ func (c *Catalogue) each(list node, add func(node) (named node, name string, err
 			return err
 		}
 		if seen[name] {
-			return at.fault("remove one of them", "%q stands twice", name)
+			return at.Fault("remove one of them", "%q stands twice", name)
 		}
 		seen[name] = true
 	}
 	return nil
 }
 
-func (c *Catalogue) addQuantity(n node) (named node, name string, err error) {
-	q, err := n.quantity()
+func (c *Catalogue) addQuantity(n yamldoc.Node) (named yamldoc.Node, name string, err error) {
+	q, err := quantityIn(n)
 	if err != nil {
 		return n, "", err
 	}
@@ -108,33 +109,33 @@ func (c *Catalogue) addQuantity(n node) (named node, name string, err error) {
 	return n, q.Name, nil
 }
 
-// quantity reads the declaration of a quantity: name, label, unit, resolution.
-func (n node) quantity() (quantity.Quantity, error) {
-	f, err := n.fields("name!", "label", "unit", "resolution!")
+// quantityIn reads the declaration of a quantity: name, label, unit, resolution.
+func quantityIn(n yamldoc.Node) (quantity.Quantity, error) {
+	f, err := n.Fields("name!", "label", "unit", "resolution!")
 	if err != nil {
 		return quantity.Quantity{}, err
 	}
 	var name, label, unit string
-	if name, err = f["name"].text(); err != nil {
+	if name, err = f["name"].Text(); err != nil {
 		return quantity.Quantity{}, err
 	}
 	if l, ok := f["label"]; ok {
-		if label, err = l.text(); err != nil {
+		if label, err = l.Text(); err != nil {
 			return quantity.Quantity{}, err
 		}
 	}
 	if u, ok := f["unit"]; ok {
-		if unit, err = u.scalar(); err != nil {
+		if unit, err = u.Scalar(); err != nil {
 			return quantity.Quantity{}, err
 		}
 	}
-	resolution, err := f["resolution"].number()
+	resolution, err := f["resolution"].Number()
 	if err != nil {
 		return quantity.Quantity{}, err
 	}
 	q, err := declareQuantity(name, label, strings.TrimSpace(unit), resolution)
 	if err != nil {
-		return quantity.Quantity{}, f["name"].fault("", "%s", withoutKind(err))
+		return quantity.Quantity{}, f["name"].Fault("", "%s", withoutKind(err))
 	}
 	return q, nil
 }
@@ -149,39 +150,39 @@ func withoutKind(err error) string {
 	return text
 }
 
-// name reads the name of a product, recipe or catalogue.
-func (n node) name() (string, error) {
-	text, err := n.text()
+// nameIn reads the name of a product, recipe or catalogue.
+func nameIn(n yamldoc.Node) (string, error) {
+	text, err := n.Text()
 	if err != nil {
 		return "", err
 	}
 	if err := checkName("catalogue", text); err != nil {
-		return "", n.fault(fmt.Sprintf("write 1 to %d printable characters without / and \\", maxName), "%s cannot be a name", shown([]byte(text)))
+		return "", n.Fault(fmt.Sprintf("write 1 to %d printable characters without / and \\", maxName), "%s cannot be a name", shown([]byte(text)))
 	}
 	return text, nil
 }
 
-func (c *Catalogue) addProduct(n node) (named node, name string, err error) {
-	f, err := n.fields("product!", "layout!")
+func (c *Catalogue) addProduct(n yamldoc.Node) (named yamldoc.Node, name string, err error) {
+	f, err := n.Fields("product!", "layout!")
 	if err != nil {
 		return n, "", err
 	}
 	p := CatalogueProduct{}
-	if p.Name, err = f["product"].name(); err != nil {
+	if p.Name, err = nameIn(f["product"]); err != nil {
 		return n, "", err
 	}
-	if p.Layout, err = f["layout"].layout(p.Name); err != nil {
+	if p.Layout, err = layoutIn(f["layout"], p.Name); err != nil {
 		return n, "", err
 	}
 	c.Products = append(c.Products, p)
 	return f["product"], p.Name, nil
 }
 
-// layout reads a product's layout. What it may leave out is what has one usual
+// layoutIn reads a product's layout. What it may leave out is what has one usual
 // value: no edge exclusion, no mark, x to the right, y up, centre (0, 0).
-func (n node) layout(product string) (wafermap.Layout, error) {
+func layoutIn(n yamldoc.Node, product string) (wafermap.Layout, error) {
 	l := wafermap.Layout{Name: product, Mark: "none", XAxis: "right", YAxis: "up"}
-	f, err := n.fields("name", "wafer_diameter_mm!", "die_pitch_x_mm!", "die_pitch_y_mm!", "edge_exclusion_mm",
+	f, err := n.Fields("name", "wafer_diameter_mm!", "die_pitch_x_mm!", "die_pitch_y_mm!", "edge_exclusion_mm",
 		"mark", "mark_angle_deg", "x_axis", "y_axis", "centre_x", "centre_y")
 	if err != nil {
 		return l, err
@@ -192,7 +193,7 @@ func (n node) layout(product string) (wafermap.Layout, error) {
 	}{{"wafer_diameter_mm", &l.WaferDiameterMM}, {"die_pitch_x_mm", &l.DiePitchXMM}, {"die_pitch_y_mm", &l.DiePitchYMM},
 		{"edge_exclusion_mm", &l.EdgeExclusionMM}, {"mark_angle_deg", &l.MarkAngleDeg}, {"centre_x", &l.CentreX}, {"centre_y", &l.CentreY}} {
 		if at, ok := f[v.key]; ok {
-			if *v.to, err = at.number(); err != nil {
+			if *v.to, err = at.Number(); err != nil {
 				return l, err
 			}
 		}
@@ -202,20 +203,20 @@ func (n node) layout(product string) (wafermap.Layout, error) {
 		to  *string
 	}{{"name", &l.Name}, {"mark", &l.Mark}, {"x_axis", &l.XAxis}, {"y_axis", &l.YAxis}} {
 		if at, ok := f[v.key]; ok {
-			if *v.to, err = at.text(); err != nil {
+			if *v.to, err = at.Text(); err != nil {
 				return l, err
 			}
 		}
 	}
 	if _, ok := f["mark_angle_deg"]; !ok && l.Mark != "none" {
-		return l, n.fault("state its direction from the centre in degrees: 0 right, 90 up, 270 down", "the %s has no mark_angle_deg", l.Mark)
+		return l, n.Fault("state its direction from the centre in degrees: 0 right, 90 up, 270 down", "the %s has no mark_angle_deg", l.Mark)
 	}
-	return l, n.layoutFault(f, l.Validate())
+	return l, layoutFault(n, f, l.Validate())
 }
 
 // layoutFault places the rule of Layout.Validate that was broken at the key it
 // names.
-func (n node) layoutFault(f map[string]node, err error) error {
+func layoutFault(n yamldoc.Node, f map[string]yamldoc.Node, err error) error {
 	if err == nil {
 		return nil
 	}
@@ -224,23 +225,23 @@ func (n node) layoutFault(f map[string]node, err error) error {
 	keys, problem, _ := strings.Cut(text, ": ")
 	for _, key := range strings.Split(keys, ", ") {
 		if at, ok := f[key]; ok {
-			return at.fault("", "%s", problem)
+			return at.Fault("", "%s", problem)
 		}
 	}
-	return n.fault("", "%s", text)
+	return n.Fault("", "%s", text)
 }
 
-func (c *Catalogue) addRecipe(n node) (named node, name string, err error) {
-	f, err := n.fields("recipe!", "targets")
+func (c *Catalogue) addRecipe(n yamldoc.Node) (named yamldoc.Node, name string, err error) {
+	f, err := n.Fields("recipe!", "targets")
 	if err != nil {
 		return n, "", err
 	}
 	r := CatalogueRecipe{}
-	if r.Name, err = f["recipe"].name(); err != nil {
+	if r.Name, err = nameIn(f["recipe"]); err != nil {
 		return n, "", err
 	}
 	if t, ok := f["targets"]; ok {
-		items, err := t.items(maxTargets)
+		items, err := t.Items(maxTargets)
 		if err != nil {
 			return n, "", err
 		}
@@ -254,31 +255,31 @@ func (c *Catalogue) addRecipe(n node) (named node, name string, err error) {
 	return f["recipe"], r.Name, nil
 }
 
-func (c *Catalogue) addTarget(r *CatalogueRecipe, n node) error {
-	f, err := n.fields("quantity!", "value!", "window!")
+func (c *Catalogue) addTarget(r *CatalogueRecipe, n yamldoc.Node) error {
+	f, err := n.Fields("quantity!", "value!", "window!")
 	if err != nil {
 		return err
 	}
 	t := CatalogueTarget{}
-	if t.Quantity, err = f["quantity"].text(); err != nil {
+	if t.Quantity, err = f["quantity"].Text(); err != nil {
 		return err
 	}
 	if !c.knows(t.Quantity) {
-		return f["quantity"].fault("use a built-in quantity, or declare it under quantities", "the quantity %q is not known", t.Quantity)
+		return f["quantity"].Fault("use a built-in quantity, or declare it under quantities", "the quantity %q is not known", t.Quantity)
 	}
 	for _, other := range r.Targets {
 		if other.Quantity == t.Quantity {
-			return f["quantity"].fault("remove one of them", "the quantity %q has two targets", t.Quantity)
+			return f["quantity"].Fault("remove one of them", "the quantity %q has two targets", t.Quantity)
 		}
 	}
-	if t.Value, err = f["value"].number(); err != nil {
+	if t.Value, err = f["value"].Number(); err != nil {
 		return err
 	}
-	if t.Window, err = f["window"].number(); err != nil {
+	if t.Window, err = f["window"].Number(); err != nil {
 		return err
 	}
 	if !(t.Window > 0) {
-		return f["window"].fault("state half the width of the window about the target", "%g is not above zero", t.Window)
+		return f["window"].Fault("state half the width of the window about the target", "%g is not above zero", t.Window)
 	}
 	r.Targets = append(r.Targets, t)
 	return nil

@@ -8,6 +8,7 @@ import (
 	"unicode/utf8"
 
 	"epitally/analytics"
+	"epitally/analytics/yamldoc"
 )
 
 // documentMark is the first key of a document, which says what it is.
@@ -39,12 +40,12 @@ func documentKind(head []byte) string {
 func (j *job) readDocument(ctx context.Context, kind string) error {
 	j.res.Format = kind
 	return j.ahead(ctx, nil, func(f *feed) error {
-		text, whole, err := f.all(maxDocument)
+		text, whole, err := f.all(yamldoc.MaxBytes)
 		switch {
 		case err != nil:
 			return err
 		case !whole:
-			return &analytics.Fault{Offset: -1, Kind: analytics.ErrTooLarge, Problem: fmt.Sprintf("the %s is over %d bytes", kind, maxDocument),
+			return &analytics.Fault{Offset: -1, Kind: analytics.ErrTooLarge, Problem: fmt.Sprintf("the %s is over %d bytes", kind, yamldoc.MaxBytes),
 				Remedy: "split it into several"}
 		}
 		text = bytes.TrimPrefix(text, utf8BOM)
@@ -59,6 +60,11 @@ func (j *job) readDocument(ctx context.Context, kind string) error {
 	})
 }
 
+// parseDocument parses a document that came as a file.
+func parseDocument(document []byte) (yamldoc.Node, error) {
+	return yamldoc.Parse(document, yamldoc.Form{Remedy: "put each into a file of its own"})
+}
+
 func nameInDocument(kind string, text []byte) (string, error) {
 	switch kind {
 	case "catalogue":
@@ -68,15 +74,15 @@ func nameInDocument(kind string, text []byte) (string, error) {
 		p, err := ParseProfile(text)
 		return p.Name, err
 	}
-	root, err := parseYAML(text)
+	root, err := parseDocument(text)
 	if err != nil {
 		return "", err
 	}
-	name, err := root.value(kind)
+	name, err := root.Value(kind)
 	if err != nil {
 		return "", err
 	}
-	return name.name()
+	return nameIn(name)
 }
 
 // checkText refuses bytes that are no UTF-8 text, at their line.

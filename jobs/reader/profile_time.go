@@ -6,26 +6,27 @@ import (
 	"time"
 
 	"epitally/analytics"
+	"epitally/analytics/yamldoc"
 )
 
-func (p *Profile) readConstants(n node) error {
-	list, err := n.entries()
+func (p *Profile) readConstants(n yamldoc.Node) error {
+	list, err := n.Entries()
 	if err != nil {
 		return err
 	}
 	p.constants = map[string]string{}
 	for _, e := range list {
-		text, err := e.value.text()
+		text, err := e.Value.Text()
 		if err != nil {
 			return err
 		}
-		if e.name == "measured_at" {
-			return e.value.fault("remove it, and say in facts or file_name where the file states it", "the time of measurement is no constant")
+		if e.Name == "measured_at" {
+			return e.Value.Fault("remove it, and say in facts or file_name where the file states it", "the time of measurement is no constant")
 		}
-		if err := (&about{}).state(factKey(e.name), text); err != nil {
-			return e.value.wrap(err)
+		if err := (&about{}).state(factKey(e.Name), text); err != nil {
+			return e.Value.Wrap(err)
 		}
-		p.constants[e.name] = text
+		p.constants[e.Name] = text
 	}
 	return nil
 }
@@ -39,30 +40,30 @@ func factKey(name string) string {
 	return name
 }
 
-func (p *Profile) readFacts(n node) error {
-	list, err := n.entries()
+func (p *Profile) readFacts(n yamldoc.Node) error {
+	list, err := n.Entries()
 	if err != nil {
 		return err
 	}
 	for _, e := range list {
-		f, err := e.value.fields("label", "line", "field", "unit")
+		f, err := e.Value.Fields("label", "line", "field", "unit")
 		if err != nil {
 			return err
 		}
-		rule := factRule{key: e.name, field: 1}
-		if f["label"].is() == f["line"].is() {
-			return e.value.fault("write {label: TEXT}, or {line: 3, field: 2}", "give either a label or a line")
+		rule := factRule{key: e.Name, field: 1}
+		if f["label"].Is() == f["line"].Is() {
+			return e.Value.Fault("write {label: TEXT}, or {line: 3, field: 2}", "give either a label or a line")
 		}
-		if f["label"].is() {
-			rule.label, err = f["label"].text()
+		if f["label"].Is() {
+			rule.label, err = f["label"].Text()
 		} else {
-			rule.line, err = f["line"].whole(1, maxHead)
+			rule.line, err = f["line"].Whole(1, maxHead)
 		}
-		if err == nil && f["field"].is() {
-			rule.field, err = f["field"].whole(1, maxColumns)
+		if err == nil && f["field"].Is() {
+			rule.field, err = f["field"].Whole(1, maxColumns)
 		}
-		if err == nil && f["unit"].is() {
-			rule.unit, err = f["unit"].text()
+		if err == nil && f["unit"].Is() {
+			rule.unit, err = f["unit"].Text()
 		}
 		if err != nil {
 			return err
@@ -72,31 +73,31 @@ func (p *Profile) readFacts(n node) error {
 	return nil
 }
 
-func (p *Profile) readTime(n node) error {
-	f, err := n.fields("layouts", "zone")
+func (p *Profile) readTime(n yamldoc.Node) error {
+	f, err := n.Fields("layouts", "zone")
 	if err != nil {
 		return err
 	}
-	if f["layouts"].is() {
-		texts, err := f["layouts"].texts(maxListed)
+	if f["layouts"].Is() {
+		texts, err := f["layouts"].Texts(maxListed)
 		if err != nil {
 			return err
 		}
 		for _, text := range texts {
 			layout, err := timeLayout(text)
 			if err != nil {
-				return f["layouts"].wrap(err)
+				return f["layouts"].Wrap(err)
 			}
 			p.layouts = append(p.layouts, layout)
 		}
 	}
-	if f["zone"].is() {
-		name, err := f["zone"].text()
+	if f["zone"].Is() {
+		name, err := f["zone"].Text()
 		if err != nil {
 			return err
 		}
 		if p.zone, err = time.LoadLocation(name); err != nil || name == "Local" {
-			return f["zone"].fault("use UTC or a name like Europe/Berlin", "the time zone %q is not known", name)
+			return f["zone"].Fault("use UTC or a name like Europe/Berlin", "the time zone %q is not known", name)
 		}
 	}
 	return nil
