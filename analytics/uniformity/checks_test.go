@@ -3,35 +3,13 @@ package uniformity
 import (
 	"encoding/json"
 	"math"
-	"os"
-	"path/filepath"
 	"slices"
 	"strconv"
 	"strings"
 	"testing"
-)
 
-// reference finds a file of the reference folder that stands beside the
-// checkout; the test is skipped where there is none.
-func reference(t *testing.T, path string) []byte {
-	t.Helper()
-	dir, err := os.Getwd()
-	if err != nil {
-		t.Fatal(err)
-	}
-	for ; dir != filepath.Dir(dir); dir = filepath.Dir(dir) {
-		if _, err := os.Stat(filepath.Join(dir, "go.mod")); err != nil {
-			continue
-		}
-		b, err := os.ReadFile(filepath.Join(dir, "..", "shared", "reference", path))
-		if err != nil {
-			t.Skipf("no reference data beside the checkout: %v", err)
-		}
-		return b
-	}
-	t.Skip("no go.mod above the test")
-	return nil
-}
+	"epitally/internal/sharedtest"
+)
 
 // tolerance is a bare number (absolute) or {"rel": r, "abs": a}: within either passes.
 type tolerance struct{ Rel, Abs float64 }
@@ -61,7 +39,7 @@ type checkCase struct {
 func checkCases(t *testing.T, path string) []checkCase {
 	t.Helper()
 	var file struct{ Cases []checkCase }
-	if err := json.Unmarshal(reference(t, path), &file); err != nil {
+	if err := json.Unmarshal(sharedtest.Read(t, "reference/"+path), &file); err != nil {
 		t.Fatal(err)
 	}
 	if len(file.Cases) == 0 {
@@ -97,7 +75,7 @@ func TestNISTUnivariate(t *testing.T) {
 	for _, c := range checkCases(t, "checks/nist_strd_univariate.json") {
 		values := c.Input.Values
 		if c.Input.ValuesFile != "" {
-			for line := range strings.Lines(string(reference(t, c.Input.ValuesFile))) {
+			for line := range strings.Lines(string(sharedtest.Read(t, "reference/"+c.Input.ValuesFile))) {
 				// Two lines of heading, a comment and the column's name, are not numbers.
 				if v, err := strconv.ParseFloat(strings.TrimSpace(line), 64); err == nil {
 					values = append(values, v)

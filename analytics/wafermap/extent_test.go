@@ -4,34 +4,11 @@ import (
 	"encoding/json"
 	"errors"
 	"math"
-	"os"
-	"path/filepath"
 	"testing"
 
 	"epitally/analytics"
+	"epitally/internal/sharedtest"
 )
-
-// reference finds a file of the reference folder that stands beside the
-// checkout; the test is skipped where there is none.
-func reference(t *testing.T, path string) []byte {
-	t.Helper()
-	dir, err := os.Getwd()
-	if err != nil {
-		t.Fatal(err)
-	}
-	for ; dir != filepath.Dir(dir); dir = filepath.Dir(dir) {
-		if _, err := os.Stat(filepath.Join(dir, "go.mod")); err != nil {
-			continue
-		}
-		b, err := os.ReadFile(filepath.Join(dir, "..", "shared", "reference", path))
-		if err != nil {
-			t.Skipf("no reference data beside the checkout: %v", err)
-		}
-		return b
-	}
-	t.Skip("no go.mod above the test")
-	return nil
-}
 
 func layoutOf(diameter, edge, pitchX, pitchY, centreX, centreY float64) Layout {
 	return Layout{Name: "test", WaferDiameterMM: diameter, EdgeExclusionMM: edge, DiePitchXMM: pitchX, DiePitchYMM: pitchY,
@@ -86,7 +63,7 @@ func TestDiesMatchesTheExactCases(t *testing.T) {
 			Expect struct{ Count int }
 		}
 	}
-	b := reference(t, "checks/yield.json")
+	b := sharedtest.Read(t, "reference/checks/yield.json")
 	if err := json.Unmarshal(b, &checks); err != nil {
 		t.Fatal(err)
 	}

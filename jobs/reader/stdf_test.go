@@ -13,6 +13,7 @@ import (
 	"time"
 
 	"epitally/analytics"
+	"epitally/internal/sharedtest"
 )
 
 // expectedFile is what ../shared/data/stdf/expected.json says of one file.
@@ -56,28 +57,16 @@ type expectedFile struct {
 // sharedSTDF finds the public STDF files beside the checkout.
 func sharedSTDF(t testing.TB) (dir string, files map[string]expectedFile) {
 	t.Helper()
-	at, err := os.Getwd()
-	if err != nil {
+	dir = sharedtest.Path(t, "data/stdf")
+	var list []expectedFile
+	if err := json.Unmarshal(sharedtest.Read(t, "data/stdf/expected.json"), &list); err != nil {
 		t.Fatal(err)
 	}
-	for ; at != filepath.Dir(at); at = filepath.Dir(at) {
-		dir = filepath.Join(at, "shared", "data", "stdf")
-		text, err := os.ReadFile(filepath.Join(dir, "expected.json"))
-		if err != nil {
-			continue
-		}
-		var list []expectedFile
-		if err := json.Unmarshal(text, &list); err != nil {
-			t.Fatal(err)
-		}
-		files = map[string]expectedFile{}
-		for _, f := range list {
-			files[f.File] = f
-		}
-		return dir, files
+	files = map[string]expectedFile{}
+	for _, f := range list {
+		files[f.File] = f
 	}
-	t.Skip("shared/data/stdf is not beside the checkout")
-	return "", nil
+	return dir, files
 }
 
 func readSTDFFile(t *testing.T, path string, in Input) (held, error) {
