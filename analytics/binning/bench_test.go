@@ -1,0 +1,79 @@
+package binning
+
+import (
+	"math"
+	"math/rand/v2"
+	"testing"
+
+	"epitally/analytics/wafermap"
+)
+
+// benchWafer has the shape of real values: smooth over the wafer, a little noise.
+func benchWafer(n int, seed uint64) []wafermap.Plane {
+	rng := rand.New(rand.NewPCG(seed, 1))
+	side := int(math.Sqrt(float64(n)))
+	make16 := func(name string, exponent int, centre, bowl, noise float64) wafermap.Plane {
+		k := make([]int32, n)
+		for i := range k {
+			x, y := float64(i%side)/float64(side)-0.5, float64(i/side)/float64(side)-0.5
+			k[i] = int32(math.Round((centre + bowl*4*(x*x+y*y) + noise*rng.NormFloat64()) * wafermap.Pow10(-exponent)))
+			if rng.IntN(60) == 0 {
+				k[i] = wafermap.Missing32
+			}
+		}
+		return wafermap.PackScaled(name, exponent, k)
+	}
+	return []wafermap.Plane{
+		make16("dominant_wavelength_nm", -2, 453, 4, 0.3), make16("radiant_flux_mw", -2, 24, -2, 0.6), make16("forward_voltage_v", -3, 3.25, 0.1, 0.03),
+	}
+}
+
+func benchmark(b *testing.B, bin func(binner *Binner, planes []*wafermap.Plane, lanes []Lanes, dst []uint16, counts []int, include []bool) error) {
+	const dies = 50_000
+	s := mustParse(b, threeQuantities)
+	planes := PickPlanes(s, benchWafer(dies, 1))
+	var lanes []Lanes
+	for _, p := range planes {
+		lanes = append(lanes, lanesOf(p))
+	}
+	include := make([]bool, dies)
+	for i := range include {
+		include[i] = i%200 > 3
+	}
+	dst, counts, binner := make([]uint16, dies), make([]int, len(s.Cells())), s.NewBinner()
+	b.ReportAllocs()
+	for b.Loop() {
+		if err := bin(binner, planes, lanes, dst, counts, include); err != nil {
+			b.Fatal(err)
+		}
+	}
+	b.ReportMetric(float64(dies)*float64(b.N)/b.Elapsed().Seconds()/1e6, "Mdies/s")
+}
+
+func BenchmarkBin(b *testing.B) {
+	benchmark(b, func(binner *Binner, p []*wafermap.Plane, _ []Lanes, dst []uint16, counts []int, include []bool) error {
+		return binner.Bin(dst, counts, p, include)
+	})
+}
+
+func BenchmarkBinLanes(b *testing.B) {
+	benchmark(b, func(binner *Binner, _ []*wafermap.Plane, l []Lanes, dst []uint16, counts []int, include []bool) error {
+		return binner.BinLanes(dst, counts, l, include)
+	})
+}
+
+func BenchmarkBinLanesCountOnly(b *testing.B) {
+	benchmark(b, func(binner *Binner, _ []*wafermap.Plane, l []Lanes, _ []uint16, counts []int, _ []bool) error {
+		return binner.BinLanes(nil, counts, l, nil)
+	})
+}
+
+// BenchmarkBinNewTables has a base the Binner has not met in every call.
+func BenchmarkBinNewTables(b *testing.B) {
+	benchmark(b, func(binner *Binner, _ []*wafermap.Plane, l []Lanes, dst []uint16, counts []int, include []bool) error {
+		for i := range binner.tables {
+			binner.tables[i] = binner.tables[i][:0]
+		}
+		return binner.BinLanes(dst, counts, l, include)
+	})
+}
