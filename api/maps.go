@@ -137,11 +137,7 @@ const smallMapKeep = "private, max-age=60"
 
 func (s *Server) getSmallMap(c echo.Context, p smallMapParams) error {
 	ctx := c.Request().Context()
-	m, err := s.measurement(ctx, p.ID)
-	if err != nil {
-		return err
-	}
-	q, err := quantityIn(m, p.Quantity)
+	m, q, err := s.measured(ctx, p.ID, p.Quantity)
 	if err != nil {
 		return err
 	}

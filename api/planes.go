@@ -2,6 +2,7 @@ package api
 
 import (
 	"bufio"
+	"context"
 	"encoding/binary"
 	"fmt"
 	"math"
@@ -79,13 +80,19 @@ func quantityIn(m *db.Measurement, name string) (quantity.Quantity, error) {
 	return m.Quantities[i], nil
 }
 
+// measured is a measurement and one of its quantities.
+func (s *Server) measured(ctx context.Context, id int64, name string) (*db.Measurement, quantity.Quantity, error) {
+	m, err := s.measurement(ctx, id)
+	if err != nil {
+		return nil, quantity.Quantity{}, err
+	}
+	q, err := quantityIn(m, name)
+	return m, q, err
+}
+
 func (s *Server) getPlane(c echo.Context, p planeParams) error {
 	ctx := c.Request().Context()
-	m, err := s.measurement(ctx, p.ID)
-	if err != nil {
-		return err
-	}
-	q, err := quantityIn(m, p.Quantity)
+	m, q, err := s.measured(ctx, p.ID, p.Quantity)
 	if err != nil {
 		return err
 	}
