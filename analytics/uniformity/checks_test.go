@@ -8,7 +8,7 @@ import (
 	"strings"
 	"testing"
 
-	"epitally/internal/sharedtest"
+	"epitally/testdata/sharedtest"
 )
 
 // tolerance is a bare number (absolute) or {"rel": r, "abs": a}: within either passes.

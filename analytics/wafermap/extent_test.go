@@ -7,7 +7,7 @@ import (
 	"testing"
 
 	"epitally/analytics"
-	"epitally/internal/sharedtest"
+	"epitally/testdata/sharedtest"
 )
 
 func layoutOf(diameter, edge, pitchX, pitchY, centreX, centreY float64) Layout {

@@ -11,7 +11,6 @@ import (
 var mayImport = map[string][]string{
 	"analytics":  {"analytics"},
 	"migrations": {},
-	"internal":   {}, // helpers of tests only
 	"db":         {"db", "analytics", "migrations"},
 	"web":        {"web", "analytics", "db"},
 	"jobs":       {"jobs", "db", "analytics"},
@@ -28,7 +27,7 @@ var onlyUnder = map[string][]string{
 	"github.com/chromedp":         {"cmd", "web"},
 	"net/http":                    {"api", "web", "cmd"},
 	"database/sql":                {"db"},
-	"os":                          {"db", "web", "jobs", "cmd", "migrations", "internal"},
+	"os":                          {"db", "web", "jobs", "cmd", "migrations"},
 	"log/slog":                    {"db", "web", "jobs", "api", "cmd"},
 	"github.com/spf13/pflag":      {"cmd"},
 	"github.com/schollz/progress": {"cmd"},

@@ -13,7 +13,7 @@ import (
 	"time"
 
 	"epitally/analytics"
-	"epitally/internal/sharedtest"
+	"epitally/testdata/sharedtest"
 )
 
 // expectedFile is what ../shared/data/stdf/expected.json says of one file.
