@@ -3,6 +3,7 @@ package binning
 import (
 	"math"
 	"math/rand/v2"
+	"strings"
 	"testing"
 
 	"epitally/analytics/wafermap"
@@ -76,4 +77,70 @@ func BenchmarkBinNewTables(b *testing.B) {
 		}
 		return binner.BinLanes(dst, counts, l, include)
 	})
+}
+
+// whiteWafer has chromaticities about the middle of manyPolygons.
+func whiteWafer(n int) []wafermap.Plane {
+	rng := rand.New(rand.NewPCG(4, 1))
+	side := int(math.Sqrt(float64(n)))
+	var planes []wafermap.Plane
+	for axis, name := range []string{"cie_x", "cie_y"} {
+		k := make([]int32, n)
+		for i := range k {
+			r := float64(i%side)/float64(side) - 0.5
+			if axis == 1 {
+				r = float64(i/side)/float64(side) - 0.5
+			}
+			k[i] = int32(math.Round((0.385 + 0.1*r + 0.01*rng.NormFloat64()) * 1e5))
+			if rng.IntN(60) == 0 {
+				k[i] = wafermap.Missing32
+			}
+		}
+		planes = append(planes, wafermap.PackScaled(name, -5, k))
+	}
+	return planes
+}
+
+// BenchmarkBinPolygons bins into 200 chromaticity polygons.
+func BenchmarkBinPolygons(b *testing.B) {
+	const dies = 50_000
+	s := mustParse(b, manyPolygons(20, 10, ""))
+	planes := PickPlanes(s, whiteWafer(dies))
+	dst, counts, binner := make([]uint16, dies), make([]int, len(s.Cells())), s.NewBinner()
+	b.ReportAllocs()
+	for b.Loop() {
+		if err := binner.Bin(dst, counts, planes, nil); err != nil {
+			b.Fatal(err)
+		}
+	}
+	b.ReportMetric(float64(dies)*float64(b.N)/b.Elapsed().Seconds()/1e6, "Mdies/s")
+}
+
+// BenchmarkParsePolygons is what every step of an edit pays before it bins.
+func BenchmarkParsePolygons(b *testing.B) {
+	document := []byte(manyPolygons(20, 10, ""))
+	b.ReportAllocs()
+	for b.Loop() {
+		if _, err := Parse(document); err != nil {
+			b.Fatal(err)
+		}
+	}
+}
+
+// BenchmarkConformityPolygons works out the risks of 200 polygons.
+func BenchmarkConformityPolygons(b *testing.B) {
+	const dies = 50_000
+	s := mustParse(b, strings.Replace(manyPolygons(20, 10, ""), "kind: probe", "kind: probe\nuncertainty: {cie_x: 0.0005, cie_y: 0.0005}", 1))
+	planes := PickPlanes(s, whiteWafer(dies))
+	codes, counts := make([]uint16, dies), make([]int, len(s.Cells()))
+	if err := s.Bin(codes, counts, planes, nil); err != nil {
+		b.Fatal(err)
+	}
+	b.ReportAllocs()
+	for b.Loop() {
+		if _, err := s.Conformity(codes, planes, nil, nil, 0.95); err != nil {
+			b.Fatal(err)
+		}
+	}
+	b.ReportMetric(float64(dies)*float64(b.N)/b.Elapsed().Seconds()/1e6, "Mdies/s")
 }

@@ -326,7 +326,7 @@ func TestMissingQuantityLeavesDiesUntested(t *testing.T) {
 		t.Fatal(err)
 	}
 	last := len(counts) - 1
-	if counts[last] != 2500 || slices.Min(dst) != uint16(last) || s.Cells()[last] != (Cell{UntestedName, Untested}) {
+	if counts[last] != 2500 || slices.Min(dst) != uint16(last) || s.Cells()[last] != (Cell{Name: UntestedName, Class: Untested}) {
 		t.Errorf("without a wavelength %d of 2500 dies are untested", counts[last])
 	}
 	if err := s.Bin(nil, counts, PickPlanes(s, planes), nil); err != nil || counts[last] != 2500 {

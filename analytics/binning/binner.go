@@ -213,9 +213,10 @@ func (w *wideColumn) search(k int64) int {
 const blockDies = 1024
 
 type block struct {
-	sum   [blockDies]uint32 // of verdicts
-	worst [blockDies]uint32 // largest verdict
-	masks [blockDies]uint64 // terms that no quantity has ruled out
+	sum   [blockDies]uint32  // of verdicts
+	worst [blockDies]uint32  // largest verdict
+	masks [blockDies]uint64  // terms that no quantity has ruled out
+	x, y  [blockDies]float64 // readings of a region's quantities
 }
 
 // run bins the dies of b.columns.
@@ -307,6 +308,9 @@ func (b *Binner) join(from, to int) {
 		default:
 			c.wide.join(sum, worst, from, b.spec.missing)
 		}
+	}
+	for i := range b.spec.regionPlans {
+		b.joinRegion(&b.spec.regionPlans[i], from, to)
 	}
 	if len(b.spec.terms) > 0 {
 		b.joinTerms(from, to)

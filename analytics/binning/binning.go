@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math/big"
 	"sync"
+	"time"
 
 	"epitally/analytics"
 	"epitally/analytics/wafermap"
@@ -33,13 +34,23 @@ type Spec struct {
 	Kind     string
 	Products []string
 
-	axes    []Axis
-	rules   []Rule
-	cells   []Cell
-	plans   []plan   // per quantity, in the order of Quantities
-	terms   []uint32 // verdict of each conjunction that spans quantities, first rule first
-	missing uint32   // verdict of a die that lacks a value
-	binners sync.Pool
+	ValidFrom, ValidUntil time.Time          // dates, UTC; zero: open
+	Uncertainty           map[string]float64 // standard uncertainty of one reading by quantity, in its unit
+	Currency              string             // of Price; "" when none is said
+
+	axes        []Axis
+	regions     []*Region
+	dimensions  []Dimension
+	rules       []Rule
+	cells       []Cell
+	regionPlans []regionPlan
+	plans       []plan   // per quantity, in the order of Quantities
+	axisColumns []int    // of the axes' quantities among the plans
+	axisStrides []uint32 // what one cell further adds to a bin's code
+	decided     []bool   // per code: a reject rule's reason, or untested
+	terms       []uint32 // verdict of each conjunction that spans quantities, first rule first
+	missing     uint32   // verdict of a die that lacks a value
+	binners     sync.Pool
 }
 
 // Axis is one axis of the bins.
@@ -48,6 +59,7 @@ type Axis struct {
 	Quantity string
 	Edges    []float64 // ascending; cell i is [Edges[i], Edges[i+1])
 	Names    []string  // of the cells
+	EdgeAt   []Place   // where each edge stands in the document
 	Guard    float64   // taken off every cell on each side
 }
 
@@ -61,10 +73,11 @@ type Rule struct {
 type Cell struct {
 	Name  string // bin name, reject reason, or "untested"
 	Class Class
+	Price float64 // of one die; 0 where none is stated
 }
 
 // Quantities names what the spec needs, in the order Bin wants the planes:
-// by first mention, axes before reject rules.
+// by first mention, regions before axes before reject rules.
 func (s *Spec) Quantities() []string {
 	names := make([]string, len(s.plans))
 	for i := range s.plans {
@@ -75,6 +88,16 @@ func (s *Spec) Quantities() []string {
 
 // Axes lists the axes in the document's order. Read only.
 func (s *Spec) Axes() []Axis { return s.axes }
+
+// Regions lists the regions in the document's order. Read only.
+func (s *Spec) Regions() []*Region { return s.regions }
+
+// ValidOn reports whether the specification is meant for a day: from its first to
+// its last date, both included.
+func (s *Spec) ValidOn(day time.Time) bool {
+	date := day.UTC().Truncate(24 * time.Hour)
+	return (s.ValidFrom.IsZero() || !date.Before(s.ValidFrom)) && (s.ValidUntil.IsZero() || !date.After(s.ValidUntil))
+}
 
 // Rules lists the reject rules in the order they are tried. Read only.
 func (s *Spec) Rules() []Rule { return s.rules }
@@ -114,6 +137,14 @@ type plan struct {
 	cuts     []cut    // ascending
 	verdicts []uint32 // per region between cuts: len(cuts) + 1
 	masks    []uint64 // per region, bit t: this quantity does not rule term t out; nil when no term spans quantities
+}
+
+// regionPlan gives every outcome of a region its verdict.
+type regionPlan struct {
+	*Region
+	columns  [2]int   // of its quantities among the plans
+	verdicts []uint32 // in the guard band, outside, then cell by cell: outcome + 2
+	step     uint32   // what one cell further adds to a bin's code
 }
 
 // cut is a place on the axis of real numbers that something changes at: values
@@ -156,3 +187,17 @@ func (c cut) threshold(exponent int) int64 {
 func invalid(format string, args ...any) error {
 	return fmt.Errorf(format+": %w", append(args, analytics.ErrInvalid)...)
 }
+
+// Dimension is one part of a bin's name: the cells of a region or of an axis.
+type Dimension struct {
+	Name   string
+	Cells  []string
+	Stride int // what one cell further adds to a bin's code
+}
+
+// Dimensions lists the regions, then the axes. A bin's cell of dimension d is
+// code / d.Stride % len(d.Cells).
+func (s *Spec) Dimensions() []Dimension { return s.dimensions }
+
+// Bins is the number of codes that are bins; they come first.
+func (s *Spec) Bins() int { return s.bins() }

@@ -12,15 +12,22 @@ import (
 // build works a draft into codes and verdicts.
 func (d *draft) build() (*Spec, error) {
 	if d.pattern == "" {
-		if d.pattern = "good"; len(d.axes) > 0 {
-			d.pattern = ""
-			for _, a := range d.axes {
-				d.pattern += "{" + a.Name + "}"
-			}
+		for _, dim := range d.dimensions() {
+			d.pattern += "{" + dim.name + "}"
 		}
+		if d.pattern == "" {
+			d.pattern = "good"
+		}
+	}
+	for _, r := range d.regions {
+		d.spec.regions = append(d.spec.regions, r.Region)
 	}
 	for _, a := range d.axes {
 		d.spec.axes = append(d.spec.axes, a.Axis)
+	}
+	d.spec.Uncertainty = make(map[string]float64, len(d.uncertainties))
+	for q, u := range d.uncertainties {
+		d.spec.Uncertainty[q] = nearest(u)
 	}
 	if err := d.nameBins(); err != nil {
 		return nil, err
@@ -32,6 +39,34 @@ func (d *draft) build() (*Spec, error) {
 	return d.spec, d.compile(codes)
 }
 
+// dimension is one part of a bin's name: the cells of a region or of an axis.
+type dimension struct {
+	name   string
+	cells  []string
+	stride uint32 // what one cell further adds to a bin's code
+	at     yamldoc.Node
+}
+
+// dimensions lists the regions, then the axes; the last varies fastest.
+func (d *draft) dimensions() []dimension {
+	var list []dimension
+	for _, r := range d.regions {
+		dim := dimension{name: r.Name, at: r.at}
+		for _, c := range r.Cells {
+			dim.cells = append(dim.cells, c.Name)
+		}
+		list = append(list, dim)
+	}
+	for _, a := range d.axes {
+		list = append(list, dimension{name: a.Name, cells: a.Names, at: a.at})
+	}
+	for i, step := len(list)-1, 1; i >= 0; i-- {
+		list[i].stride = uint32(step)
+		step *= len(list[i].cells)
+	}
+	return list
+}
+
 // binsAt gives the place for faults about bin names.
 func (d *draft) binsAt() yamldoc.Node {
 	if d.patternN.Node != nil {
@@ -40,22 +75,22 @@ func (d *draft) binsAt() yamldoc.Node {
 	return d.root
 }
 
-// nameBins lists the bins, the last axis varying fastest.
+// nameBins lists the bins, the last dimension varying fastest.
 func (d *draft) nameBins() error {
-	total := 1
-	for _, a := range d.axes {
-		if total *= len(a.Names); total >= maxCodes {
-			return tooLarge(a.at, fmt.Sprintf("the axes make %d bins or more, over the limit of %d codes", total, maxCodes))
+	dims, total := d.dimensions(), 1
+	for _, dim := range dims {
+		if total *= len(dim.cells); total >= maxCodes {
+			return tooLarge(dim.at, fmt.Sprintf("regions and axes make %d bins or more, over the limit of %d codes", total, maxCodes))
 		}
 	}
-	parts, err := d.splitPattern()
+	parts, err := d.splitPattern(dims)
 	if err != nil {
 		return err
 	}
 	names := make(map[string]bool, total)
-	sold := make([]bool, len(d.sellable))
+	sold, priced := make([]bool, len(d.sellable)), make([]bool, len(d.prices))
 	for i := range total {
-		name := d.binName(parts, i)
+		name := binName(parts, dims, i)
 		switch {
 		case len(name) > 4*maxName:
 			return d.binsAt().Fault("", "the bin name %q is over %d bytes", name, 4*maxName)
@@ -74,23 +109,37 @@ func (d *draft) nameBins() error {
 				class, sold[j] = Sellable, true
 			}
 		}
-		d.spec.cells = append(d.spec.cells, Cell{name, class})
+		cell := Cell{Name: name, Class: class}
+		for j := len(d.prices) - 1; j >= 0; j-- {
+			if p := d.prices[j]; matches(p.text, name) {
+				cell.Price, priced[j] = p.price, true
+			}
+		}
+		d.spec.cells = append(d.spec.cells, cell)
 	}
-	for j, p := range d.sellable {
-		if !sold[j] {
+	if err := d.idle(d.sellable, sold); err != nil {
+		return err
+	}
+	return d.idle(d.prices, priced)
+}
+
+// idle finds the first pattern that no bin's name fits.
+func (d *draft) idle(patterns []draftPattern, used []bool) error {
+	for j, p := range patterns {
+		if !used[j] {
 			return p.at.Fault("* stands for any text; the first bin is "+d.spec.cells[0].Name, "the pattern %q matches no bin", p.text)
 		}
 	}
 	return nil
 }
 
-// part of a bin name's pattern: literal text, then the cell of an axis (-1 = none).
+// part of a bin name's pattern: literal text, then the cell of a dimension (-1 = none).
 type part struct {
 	literal string
 	axis    int
 }
 
-func (d *draft) splitPattern() ([]part, error) {
+func (d *draft) splitPattern(dims []dimension) ([]part, error) {
 	var parts []part
 	for rest := d.pattern; rest != ""; {
 		literal, after, open := strings.Cut(rest, "{")
@@ -104,26 +153,22 @@ func (d *draft) splitPattern() ([]part, error) {
 		if !closed {
 			return nil, d.binsAt().Fault("", "a { without its } in the bin name %q", d.pattern)
 		}
-		axis := slices.IndexFunc(d.axes, func(a draftAxis) bool { return a.Name == name })
+		axis := slices.IndexFunc(dims, func(dim dimension) bool { return dim.name == name })
 		if axis < 0 {
-			return nil, d.binsAt().Fault("", "the bin name %q refers to the axis %q, which does not exist", d.pattern, name)
+			return nil, d.binsAt().Fault("", "the bin name %q refers to %q, which is no axis or region", d.pattern, name)
 		}
 		parts, rest = append(parts, part{literal, axis}), behind
 	}
 	return parts, nil
 }
 
-func (d *draft) binName(parts []part, bin int) string {
-	cells := make([]int, len(d.axes))
-	for a := len(d.axes) - 1; a >= 0; a-- {
-		n := len(d.axes[a].Names)
-		cells[a], bin = bin%n, bin/n
-	}
+func binName(parts []part, dims []dimension, bin int) string {
 	var b strings.Builder
 	for _, p := range parts {
 		b.WriteString(p.literal)
 		if p.axis >= 0 {
-			b.WriteString(d.axes[p.axis].Names[cells[p.axis]])
+			dim := dims[p.axis]
+			b.WriteString(dim.cells[bin/int(dim.stride)%len(dim.cells)])
 		}
 	}
 	return b.String()
@@ -164,13 +209,24 @@ func (d *draft) addReasons() (map[string]uint32, error) {
 		}
 		if _, known := codes[reason]; !known {
 			codes[reason] = uint32(len(d.spec.cells))
-			d.spec.cells = append(d.spec.cells, Cell{reason, Reject})
+			d.spec.cells = append(d.spec.cells, Cell{Name: reason, Class: Reject})
 		}
 		return nil
 	}
 	for _, r := range d.rules {
 		if err := add(r.reason, r.when); err != nil {
 			return nil, err
+		}
+	}
+	for _, r := range d.regions {
+		reasons := []string{r.Outside}
+		if r.Guard > 0 {
+			reasons = append(reasons, r.inner)
+		}
+		for _, reason := range reasons {
+			if err := add(reason, r.at); err != nil {
+				return nil, err
+			}
 		}
 	}
 	for _, a := range d.axes {
@@ -188,7 +244,7 @@ func (d *draft) addReasons() (map[string]uint32, error) {
 		return nil, tooLarge(d.root, fmt.Sprintf("bins and reject reasons are %d codes, over the limit of %d", len(d.spec.cells), maxCodes-1))
 	}
 	codes[UntestedName] = uint32(len(d.spec.cells))
-	d.spec.cells = append(d.spec.cells, Cell{UntestedName, Untested})
+	d.spec.cells = append(d.spec.cells, Cell{Name: UntestedName, Class: Untested})
 	return codes, nil
 }
 
@@ -199,6 +255,11 @@ func verdict(rank int, code uint32) uint32 { return uint32(0xffff-rank)<<16 | co
 func (d *draft) compile(codes map[string]uint32) error {
 	s := d.spec
 	s.missing = verdict(0, codes[UntestedName])
+	s.decided = make([]bool, len(s.cells))
+	s.decided[codes[UntestedName]] = true
+	for _, r := range d.rules {
+		s.decided[codes[r.reason]] = true
+	}
 	d.collectCuts()
 	for i := range s.plans {
 		p := &s.plans[i]
@@ -206,13 +267,21 @@ func (d *draft) compile(codes map[string]uint32) error {
 		p.cuts = slices.CompactFunc(p.cuts, func(a, b cut) bool { return a.compare(b) == 0 })
 		p.verdicts = make([]uint32, len(p.cuts)+1)
 	}
-	stride := make([]uint32, len(d.axes))
-	for a, step := len(d.axes)-1, 1; a >= 0; a-- {
-		stride[a], step = uint32(step), step*len(d.axes[a].Names)
+	dims := d.dimensions()
+	for _, dim := range dims {
+		s.dimensions = append(s.dimensions, Dimension{dim.name, dim.cells, int(dim.stride)})
+	}
+	rank := 1 + len(d.rules)
+	for i := range d.regions {
+		d.compileRegion(&d.regions[i], dims[i].stride, rank, codes)
+		rank += 2
 	}
 	for a := range d.axes {
 		p := d.plan(d.axes[a].Quantity)
-		for region, v := range d.axes[a].verdicts(p, 1+len(d.rules)+3*a, stride[a], codes) {
+		stride := dims[len(d.regions)+a].stride
+		s.axisColumns = append(s.axisColumns, slices.IndexFunc(s.plans, func(q plan) bool { return q.quantity == p.quantity }))
+		s.axisStrides = append(s.axisStrides, stride)
+		for region, v := range d.axes[a].verdicts(p, rank+3*a, stride, codes) {
 			p.verdicts[region] = join(p.verdicts[region], v)
 		}
 	}
@@ -243,7 +312,25 @@ func (d *draft) plan(quantity string) *plan {
 	return &d.spec.plans[i]
 }
 
+// compileRegion gives the region's outcomes their verdicts; its rejects rank from
+// first on.
+func (d *draft) compileRegion(r *draftRegion, stride uint32, first int, codes map[string]uint32) {
+	rp := regionPlan{Region: r.Region, step: stride}
+	for i, q := range r.Quantities {
+		rp.columns[i] = slices.IndexFunc(d.spec.plans, func(p plan) bool { return p.quantity == q })
+	}
+	rp.verdicts = []uint32{verdict(first+1, codes[r.inner]), verdict(first, codes[r.Outside])}
+	for i := range r.Cells {
+		rp.verdicts = append(rp.verdicts, uint32(i)*stride)
+	}
+	d.spec.regionPlans = append(d.spec.regionPlans, rp)
+}
+
 func (d *draft) collectCuts() {
+	for _, r := range d.regions {
+		d.plan(r.Quantities[0])
+		d.plan(r.Quantities[1])
+	}
 	for _, a := range d.axes {
 		p := d.plan(a.Quantity)
 		p.cuts = append(p.cuts, cut{a.edges[0], false}, cut{a.edges[len(a.edges)-1], true})

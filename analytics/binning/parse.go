@@ -43,15 +43,20 @@ func Parse(document []byte) (*Spec, error) {
 
 // draft is a document that has been read but not yet worked into codes.
 type draft struct {
-	spec     *Spec
-	rules    []draftRule
-	terms    int // of all rules
-	axes     []draftAxis
+	spec    *Spec
+	rules   []draftRule
+	terms   int // of all rules
+	axes    []draftAxis
+	regions []draftRegion
+
+	uncertainties map[string]*big.Rat
+
 	root     yamldoc.Node
 	pattern  string
 	patternN yamldoc.Node
 	all      bool // every bin is sellable
 	sellable []draftPattern
+	prices   []draftPattern
 }
 
 type draftRule struct {
@@ -69,16 +74,17 @@ type draftAxis struct {
 }
 
 type draftPattern struct {
-	text string
-	at   yamldoc.Node
+	text  string
+	price float64 // of one die, where the pattern prices bins
+	at    yamldoc.Node
 }
 
 func parseSpec(root yamldoc.Node) (*draft, error) {
-	f, err := root.Fields("specification!", "title", "kind!", "products", "rejects", "axes", "bins")
+	f, err := root.Fields("specification!", "title", "kind!", "products", "valid", "uncertainty", "rejects", "regions", "axes", "bins")
 	if err != nil {
 		return nil, err
 	}
-	d := &draft{spec: &Spec{}, root: root}
+	d := &draft{spec: &Spec{}, root: root, uncertainties: map[string]*big.Rat{}}
 	if d.spec.Name, err = f["specification"].TextWithin(maxName); err != nil {
 		return nil, err
 	}
@@ -99,15 +105,18 @@ func parseSpec(root yamldoc.Node) (*draft, error) {
 	for _, part := range []struct {
 		key  string
 		read func(*draft, yamldoc.Node) error
-	}{{"products", (*draft).readProducts}, {"rejects", (*draft).readRejects}, {"axes", (*draft).readAxes}, {"bins", (*draft).readBins}} {
+	}{
+		{"products", (*draft).readProducts}, {"valid", (*draft).readValid}, {"uncertainty", (*draft).readUncertainty},
+		{"rejects", (*draft).readRejects}, {"regions", (*draft).readRegions}, {"axes", (*draft).readAxes}, {"bins", (*draft).readBins},
+	} {
 		if n, ok := f[part.key]; ok {
 			if err := part.read(d, n); err != nil {
 				return nil, err
 			}
 		}
 	}
-	if len(d.rules) == 0 && len(d.axes) == 0 {
-		return nil, root.Fault("add rejects, axes or both", "the specification tests nothing")
+	if len(d.rules) == 0 && len(d.axes) == 0 && len(d.regions) == 0 {
+		return nil, root.Fault("add rejects, regions or axes", "the specification tests nothing")
 	}
 	return d, nil
 }
@@ -193,12 +202,17 @@ func (d *draft) readAxes(n yamldoc.Node) error {
 	}
 	seen := map[string]bool{}
 	for _, item := range items {
-		a, err := readAxis(item)
+		a, err := d.readAxis(item)
 		if err != nil {
 			return err
 		}
 		if seen[a.Name] {
 			return item.Fault("", "axis %q stands twice", a.Name)
+		}
+		for _, r := range d.regions {
+			if r.Name == a.Name {
+				return item.Fault("", "%q names a region and an axis", a.Name)
+			}
 		}
 		seen[a.Name] = true
 		d.axes = append(d.axes, a)
@@ -206,17 +220,14 @@ func (d *draft) readAxes(n yamldoc.Node) error {
 	return nil
 }
 
-func readAxis(n yamldoc.Node) (a draftAxis, err error) {
-	f, err := n.Fields("axis!", "quantity!", "edges!", "names", "below", "above", "guard", "guard_reason")
+func (d *draft) readAxis(n yamldoc.Node) (a draftAxis, err error) {
+	f, err := n.Fields("axis!", "quantity!", "edges", "steps", "ratios", "names", "below", "above", "guard", "guard_reason")
 	if err != nil {
 		return a, err
 	}
 	a.at = n
-	if a.Name, err = f["axis"].TextWithin(maxName); err != nil {
+	if a.Name, err = dimensionName(f["axis"], "axis"); err != nil {
 		return a, err
-	}
-	if !nameRule.MatchString(a.Name) {
-		return a, f["axis"].Fault("use letters, digits, -, _ and .", "%q cannot name an axis", a.Name)
 	}
 	if a.Quantity, err = f["quantity"].TextWithin(maxName); err != nil {
 		return a, err
@@ -224,10 +235,10 @@ func readAxis(n yamldoc.Node) (a draftAxis, err error) {
 	if !quantity.ValidName(a.Quantity) {
 		return a, f["quantity"].Fault("use lower-case letters, digits and underscores, a letter first", "%q cannot name a quantity", a.Quantity)
 	}
-	if err := a.readEdges(f["edges"]); err != nil {
+	if err := a.readBounds(n, f); err != nil {
 		return a, err
 	}
-	if err := a.readGuard(f); err != nil {
+	if err := a.readGuard(f, d.uncertainties[a.Quantity]); err != nil {
 		return a, err
 	}
 	a.below, a.above, a.inner = a.Name+" below", a.Name+" above", "guard"
@@ -239,6 +250,25 @@ func readAxis(n yamldoc.Node) (a draftAxis, err error) {
 		}
 	}
 	return a, a.readNames(f)
+}
+
+// readBounds reads the edges in whichever form they are given.
+func (a *draftAxis) readBounds(n yamldoc.Node, f map[string]yamldoc.Node) error {
+	given := 0
+	for _, key := range []string{"edges", "steps", "ratios"} {
+		if f[key].Is() {
+			given++
+		}
+	}
+	switch {
+	case given != 1:
+		return n.Fault("give one of edges, steps and ratios", "%d of edges, steps and ratios", given)
+	case f["steps"].Is():
+		return a.readSeries(f["steps"], false)
+	case f["ratios"].Is():
+		return a.readSeries(f["ratios"], true)
+	}
+	return a.readEdges(f["edges"])
 }
 
 func (a *draftAxis) readEdges(n yamldoc.Node) error {
@@ -257,8 +287,8 @@ func (a *draftAxis) readEdges(n yamldoc.Node) error {
 		if i > 0 && a.edges[i-1].Cmp(v) >= 0 {
 			return item.Fault("list the edges in ascending order", "edge %s does not follow %s", trimmed(v), trimmed(a.edges[i-1]))
 		}
-		a.edges = append(a.edges, v)
-		a.Edges = append(a.Edges, nearest(v))
+		a.addEdge(v)
+		a.EdgeAt[i] = placeOf(item)
 	}
 	return nil
 }
@@ -275,7 +305,9 @@ func decimalOf(n yamldoc.Node) (*big.Rat, error) {
 	return v, nil
 }
 
-func (a *draftAxis) readGuard(f map[string]yamldoc.Node) (err error) {
+// readGuard reads the guard; u is the quantity's standard uncertainty, nil where
+// none is stated.
+func (a *draftAxis) readGuard(f map[string]yamldoc.Node, u *big.Rat) error {
 	a.guard = new(big.Rat)
 	n, ok := f["guard"]
 	if !ok {
@@ -284,11 +316,15 @@ func (a *draftAxis) readGuard(f map[string]yamldoc.Node) (err error) {
 		}
 		return nil
 	}
-	if a.guard, err = decimalOf(n); err != nil {
+	width, inU, err := guardOf(n)
+	if err != nil {
 		return err
 	}
-	if a.guard.Sign() < 0 {
-		return n.Fault("", "a guard band cannot be negative")
+	if a.guard = width; inU {
+		if u == nil {
+			return n.Fault(fmt.Sprintf("add uncertainty: {%s: …}", a.Quantity), "the guard is in uncertainties, but that of %s is not stated", a.Quantity)
+		}
+		a.guard = new(big.Rat).Mul(width, u)
 	}
 	twice := new(big.Rat).Add(a.guard, a.guard)
 	for i := 1; i < len(a.edges); i++ {
@@ -335,8 +371,11 @@ func (a *draftAxis) readNames(f map[string]yamldoc.Node) error {
 }
 
 func (d *draft) readBins(n yamldoc.Node) error {
-	f, err := n.Fields("name", "sellable")
+	f, err := n.Fields("name", "sellable", "prices", "currency")
 	if err != nil {
+		return err
+	}
+	if err := d.readPrices(f); err != nil {
 		return err
 	}
 	if n, ok := f["name"]; ok {
@@ -365,7 +404,7 @@ func (d *draft) readBins(n yamldoc.Node) error {
 		if err != nil {
 			return err
 		}
-		d.sellable = append(d.sellable, draftPattern{text, item})
+		d.sellable = append(d.sellable, draftPattern{text: text, at: item})
 	}
 	return nil
 }

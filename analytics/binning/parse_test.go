@@ -23,7 +23,7 @@ func TestParseNamesEveryCode(t *testing.T) {
 	}
 	cells := s.Cells()
 	const bins = 4 * 3 * 3
-	if cells[0] != (Cell{"W1F1V1", Unsellable}) || cells[bins-1] != (Cell{"W4F3V3", Unsellable}) || cells[9] != (Cell{"W2F1V1", Sellable}) {
+	if cells[0] != (Cell{Name: "W1F1V1", Class: Unsellable}) || cells[bins-1] != (Cell{Name: "W4F3V3", Class: Unsellable}) || cells[9] != (Cell{Name: "W2F1V1", Class: Sellable}) {
 		t.Errorf("bins: %v", cells[:bins])
 	}
 	var rest []string
@@ -52,7 +52,7 @@ rejects:
   - {reason: leaky, when: leak_na < -5}
 bins: {name: pass}
 `)
-	want := []Cell{{"pass", Sellable}, {"leaky", Reject}, {"shorted", Reject}, {UntestedName, Untested}}
+	want := []Cell{{Name: "pass"}, {Name: "leaky", Class: Reject}, {Name: "shorted", Class: Reject}, {Name: UntestedName, Class: Untested}}
 	if !slices.Equal(s.Cells(), want) {
 		t.Errorf("cells %v", s.Cells())
 	}
@@ -101,7 +101,7 @@ func TestParseFaultsSayWhere(t *testing.T) {
 		{"reason is untested", axisDocument("edges: [1, 3]", "below: untested"), 7, 12, "axes[1].below", "reject reason"},
 		{"bins alike", axisDocument("edges: [1, 2, 3]") + "bins: {name: A}\n", 7, 14, "bins.name", "two bins"},
 		{"bin and reason alike", axisDocument("edges: [1, 2]", "below: W1"), 4, 5, "axes[1]", "a bin and a reject"},
-		{"unknown axis", axisDocument("edges: [1, 2]") + "bins: {name: \"{F}\"}\n", 7, 14, "bins.name", `axis "F"`},
+		{"unknown axis", axisDocument("edges: [1, 2]") + "bins: {name: \"{F}\"}\n", 7, 14, "bins.name", `"F", which is no axis or region`},
 		{"open brace", axisDocument("edges: [1, 2]") + "bins: {name: \"{W\"}\n", 7, 14, "bins.name", "without its }"},
 		{"sellable word", axisDocument("edges: [1, 2]") + "bins: {sellable: most}\n", 7, 18, "bins.sellable", "does not say"},
 		{"sellable matches none", axisDocument("edges: [1, 2]") + "bins: {sellable: [V*]}\n", 7, 19, "bins.sellable[1]", "matches no bin"},

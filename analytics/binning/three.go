@@ -2,9 +2,9 @@ package binning
 
 // threeLanes reports whether the call at work is the common one of re-binning
 // many wafers out of the database: three quantities as they are stored, and no
-// rule that spans quantities.
+// region or rule that spans quantities.
 func (b *Binner) threeLanes() bool {
-	if len(b.columns) != 3 || len(b.spec.terms) > 0 {
+	if len(b.columns) != 3 || len(b.spec.terms)+len(b.spec.regionPlans) > 0 {
 		return false
 	}
 	for i := range b.columns {
