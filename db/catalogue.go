@@ -7,6 +7,7 @@ import (
 
 	"github.com/jackc/pgx/v5"
 
+	"epitally/analytics/colour"
 	"epitally/analytics/quantity"
 )
 
@@ -72,17 +73,24 @@ type Catalogue struct {
 	Products   []Product
 	Recipes    []Recipe
 	Quantities []quantity.Quantity
+	Stations   []Station
 }
 
-// PutCatalogue inserts or updates and marks measurements of changed products
-// and recipes stale.
+// Station is what one station's readings are worth.
+type Station struct {
+	Name        string
+	Uncertainty map[string]float64 // standard uncertainty of one reading by quantity, in its unit
+}
+
+// PutCatalogue inserts or updates and marks measurements of changed products,
+// recipes and stations stale.
 func (l *Load) PutCatalogue(ctx context.Context, c Catalogue) (err error) {
 	defer wrap(&err, "store catalogue")
 	l.mu.Lock()
 	defer l.mu.Unlock()
 	batch := &pgx.Batch{}
 	batch.Queue(lockDocuments)
-	var products, recipes []string
+	var products, recipes, stations []string
 	for _, p := range c.Products {
 		if err := p.Layout.Validate(); err != nil {
 			return err
@@ -94,6 +102,13 @@ func (l *Load) PutCatalogue(ctx context.Context, c Catalogue) (err error) {
 		recipes = append(recipes, r.Name)
 		queueRecipe(batch, r)
 	}
+	for _, st := range c.Stations {
+		stations = append(stations, st.Name)
+		batch.Queue(`DELETE FROM station_uncertainty WHERE station = $1`, st.Name)
+		for q, u := range st.Uncertainty {
+			batch.Queue(`INSERT INTO station_uncertainty (station, quantity, standard_uncertainty) VALUES ($1, $2, $3)`, st.Name, q, u)
+		}
+	}
 	for _, q := range c.Quantities {
 		batch.Queue(upsertQuantity, q.Name, q.Label, q.Unit, q.Resolution)
 	}
@@ -101,8 +116,10 @@ func (l *Load) PutCatalogue(ctx context.Context, c Catalogue) (err error) {
 		UPDATE measurement m SET stale = true
 		FROM wafer w LEFT JOIN run ru ON ru.id = w.run_id
 		WHERE w.id = m.wafer_id AND (w.product_id IN (SELECT id FROM product WHERE name = ANY ($1))
-			OR coalesce(w.recipe_id, ru.recipe_id) IN (SELECT id FROM recipe WHERE name = ANY ($2)))`, products, recipes)
+			OR m.station = ANY ($3)
+			OR coalesce(w.recipe_id, ru.recipe_id) IN (SELECT id FROM recipe WHERE name = ANY ($2)))`, products, recipes, stations)
 	clear(l.targets)
+	clear(l.stations)
 	return l.tx.SendBatch(ctx, batch).Close()
 }
 
@@ -125,12 +142,31 @@ func queueProduct(batch *pgx.Batch, p Product) {
 }
 
 func queueRecipe(batch *pgx.Batch, r Recipe) {
-	batch.Queue(`INSERT INTO recipe (name) VALUES ($1) ON CONFLICT (name) DO NOTHING`, r.Name)
+	batch.Queue(`INSERT INTO recipe (name, colour_model) VALUES ($1, $2) ON CONFLICT (name) DO UPDATE SET colour_model = excluded.colour_model`, r.Name, r.Colour)
 	batch.Queue(`DELETE FROM recipe_target WHERE recipe_id = (SELECT id FROM recipe WHERE name = $1)`, r.Name)
 	for _, t := range r.Targets {
 		batch.Queue(`INSERT INTO recipe_target (recipe_id, quantity, value, value_window) SELECT id, $2, $3, $4 FROM recipe WHERE name = $1`,
 			r.Name, t.Quantity, t.Value, t.Window)
 	}
+}
+
+// StationUncertainty reads what a station says of its readings: the standard
+// uncertainty by quantity. A station that says nothing has none.
+func (s *Store) StationUncertainty(ctx context.Context, station string) (u map[string]float64, err error) {
+	defer wrap(&err, "uncertainties of station %q", station)
+	return stationUncertainty(ctx, s.pool, station)
+}
+
+func stationUncertainty(ctx context.Context, q querier, station string) (map[string]float64, error) {
+	rows, err := q.Query(ctx, `SELECT quantity, standard_uncertainty FROM station_uncertainty WHERE station = $1`, station)
+	if err != nil {
+		return nil, err
+	}
+	out := map[string]float64{}
+	var name string
+	var u float64
+	_, err = pgx.ForEachRow(rows, []any{&name, &u}, func() error { out[name] = u; return nil })
+	return out, err
 }
 
 // Products lists products that a catalogue has described, by name.
@@ -159,17 +195,18 @@ func (s *Store) Products(ctx context.Context) (out []Product, err error) {
 func (s *Store) Recipes(ctx context.Context) (out []Recipe, err error) {
 	defer wrap(&err, "recipes")
 	rows, err := s.pool.Query(ctx, `
-		SELECT r.name, coalesce(t.quantity, ''), coalesce(t.value, 0), coalesce(t.value_window, 0)
+		SELECT r.name, r.colour_model, coalesce(t.quantity, ''), coalesce(t.value, 0), coalesce(t.value_window, 0)
 		FROM recipe r LEFT JOIN recipe_target t ON t.recipe_id = r.id ORDER BY r.name, t.quantity`)
 	if err != nil {
 		return nil, err
 	}
 	out = []Recipe{}
 	var name string
+	var model *colour.PeakModel
 	var t Target
-	_, err = pgx.ForEachRow(rows, []any{&name, &t.Quantity, &t.Value, &t.Window}, func() error {
+	_, err = pgx.ForEachRow(rows, []any{&name, &model, &t.Quantity, &t.Value, &t.Window}, func() error {
 		if len(out) == 0 || out[len(out)-1].Name != name {
-			out = append(out, Recipe{Name: name, Targets: []Target{}})
+			out = append(out, Recipe{Name: name, Targets: []Target{}, Colour: model})
 		}
 		if t.Quantity != "" {
 			last := &out[len(out)-1]

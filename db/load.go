@@ -5,12 +5,14 @@ import (
 	"encoding/hex"
 	"errors"
 	"fmt"
+	"slices"
 	"sync"
 	"time"
 
 	"github.com/jackc/pgx/v5"
 
 	"epitally/analytics"
+	"epitally/analytics/colour"
 	"epitally/analytics/quantity"
 	"epitally/analytics/uniformity"
 	"epitally/analytics/wafermap"
@@ -29,7 +31,8 @@ type Load struct {
 	grids    map[[32]byte]int64 // grids made or found; the store learns them at the commit
 	specs    map[specsKey][]Spec
 	targets  map[string][]Target
-	shares   bool // documents are held
+	stations map[string]map[string]float64 // their uncertainties
+	shares   bool                          // documents are held
 	declared map[string]bool
 	taken    int
 }
@@ -44,7 +47,7 @@ func (s *Store) BeginLoad(ctx context.Context) (l *Load, err error) {
 		return nil, err
 	}
 	l = &Load{store: s, tx: tx, wafers: map[string]int64{}, grids: map[[32]byte]int64{},
-		specs: map[specsKey][]Spec{}, targets: map[string][]Target{}, declared: map[string]bool{}}
+		specs: map[specsKey][]Spec{}, targets: map[string][]Target{}, stations: map[string]map[string]float64{}, declared: map[string]bool{}}
 	// A large file is many short statements and some long ones; a load is bounded
 	// by its caller's context instead.
 	if err := tx.QueryRow(ctx, `SELECT set_config('statement_timeout', '0', true), nextval('source_id_seq')`).Scan(nil, &l.sourceID); err != nil {
@@ -59,13 +62,14 @@ func (s *Store) BeginLoad(ctx context.Context) (l *Load, err error) {
 // version of every spec of the product and the measurement kind. A wafer never
 // seen gives a Wafer with only its name.
 type WaferContext struct {
-	Wafer Wafer
-	Specs []Spec
+	Wafer       Wafer
+	Specs       []Spec
+	Uncertainty map[string]float64 // the station's, by quantity
 }
 
 // WaferContext reads inside the load's transaction. It locks the wafer, so that
 // two loads of one wafer agree on which measurement is current.
-func (l *Load) WaferContext(ctx context.Context, wafer, kind string) (c *WaferContext, err error) {
+func (l *Load) WaferContext(ctx context.Context, wafer, kind, station string) (c *WaferContext, err error) {
 	defer wrap(&err, "wafer %s", wafer)
 	l.mu.Lock()
 	defer l.mu.Unlock()
@@ -76,6 +80,9 @@ func (l *Load) WaferContext(ctx context.Context, wafer, kind string) (c *WaferCo
 		l.shares = true
 	}
 	c = &WaferContext{Wafer: Wafer{Name: wafer}}
+	if c.Uncertainty, err = l.stationUncertainty(ctx, station); err != nil {
+		return nil, err
+	}
 	w, err := scanWafer(l.tx.QueryRow(ctx, selectWafer+` WHERE w.name = $1 FOR NO KEY UPDATE OF w`, wafer))
 	if errors.Is(err, pgx.ErrNoRows) {
 		return c, nil
@@ -98,6 +105,18 @@ func (l *Load) WaferContext(ctx context.Context, wafer, kind string) (c *WaferCo
 	}
 	c.Specs = specs
 	return c, nil
+}
+
+func (l *Load) stationUncertainty(ctx context.Context, station string) (map[string]float64, error) {
+	u, ok := l.stations[station]
+	if ok {
+		return u, nil
+	}
+	u, err := stationUncertainty(ctx, l.tx, station)
+	if err == nil {
+		l.stations[station] = u
+	}
+	return u, err
 }
 
 func (l *Load) targetsOf(ctx context.Context, recipe string) ([]Target, error) {
@@ -129,10 +148,37 @@ type NewMeasurement struct {
 // Derived is what is computed once at load: a summary and a small map per
 // plane, a tally per spec version.
 type Derived struct {
-	Summaries []uniformity.Summary // one per plane
-	SmallMaps []SmallMap           // one per plane
+	Summaries []uniformity.Summary // one per small map, in their order
+	SmallMaps []SmallMap           // one per plane, measured ones first
 	Tallies   []NewTally
 	State     string // colour state word
+
+	Planes      []wafermap.Plane  // computed from the measured ones; Summaries and SmallMaps cover them, after the measured ones
+	DerivedFrom map[string]string // per computed plane: what it was computed from
+	Suspects    []colour.Suspect
+}
+
+// quantities are those of all planes, measured and computed.
+func (d *Derived) quantities() []quantity.Quantity {
+	qs := make([]quantity.Quantity, len(d.SmallMaps))
+	for i, m := range d.SmallMaps {
+		qs[i] = m.Quantity
+	}
+	return qs
+}
+
+func (d *Derived) origins() map[string]string {
+	if d.DerivedFrom == nil {
+		return map[string]string{}
+	}
+	return d.DerivedFrom
+}
+
+func (d *Derived) doubts() []colour.Suspect {
+	if d.Suspects == nil {
+		return []colour.Suspect{}
+	}
+	return d.Suspects
 }
 
 // NewTally is a tally of the spec version SpecID.
@@ -152,7 +198,7 @@ func (l *Load) PutMeasurement(ctx context.Context, m *NewMeasurement) (id int64,
 	if err := l.store.ensureMonth(ctx, m.MeasuredAt); err != nil {
 		return 0, err
 	}
-	planes, err := newPlaneRows(m.Planes, m.Grid.Len())
+	planes, err := newPlaneRows(slices.Concat(m.Planes, m.Derived.Planes), m.Grid.Len())
 	if err != nil {
 		return 0, err
 	}
@@ -173,7 +219,7 @@ func (l *Load) PutMeasurement(ctx context.Context, m *NewMeasurement) (id int64,
 	batch := &pgx.Batch{}
 	l.queueMeasurement(batch, at, m, gridID)
 	planes.queue(batch, at)
-	if err := queueDerived(batch, at, m.Quantities, m.Derived); err != nil {
+	if err := queueDerived(batch, at, m.Derived); err != nil {
 		return 0, err
 	}
 	l.queueDeclared(batch, m.Quantities)
@@ -257,11 +303,11 @@ func (l *Load) queueMeasurement(batch *pgx.Batch, at rowKey, m *NewMeasurement, 
 		WHERE wafer_id = $1 AND kind = $2 AND is_current AND measured_at <= $3`, at.wafer, m.Kind, at.measuredAt)
 	batch.Queue(`
 		INSERT INTO measurement (wafer_id, id, measured_at, kind, station, drive_current_ma, dies, remeasured,
-			is_current, state, main_quantity, source_id, grid_id, source_layout, facts, notices)
+			is_current, state, main_quantity, source_id, grid_id, source_layout, facts, notices, derived_from, suspects)
 		SELECT $1, $2, $3, $4, $5, $6, $7, $8,
-			NOT EXISTS (SELECT FROM measurement WHERE wafer_id = $1 AND kind = $4 AND is_current), $9, $10, $11, $12, $13, $14, $15`,
+			NOT EXISTS (SELECT FROM measurement WHERE wafer_id = $1 AND kind = $4 AND is_current), $9, $10, $11, $12, $13, $14, $15, $16, $17`,
 		at.wafer, at.id, at.measuredAt, m.Kind, m.Station, m.DriveCurrentMA, m.Grid.Len(), m.Remeasured,
-		m.Derived.State, mainQuantity(m.Quantities), l.sourceID, gridID, layout, facts, notices)
+		m.Derived.State, mainQuantity(m.Derived.quantities()), l.sourceID, gridID, layout, facts, notices, m.Derived.origins(), m.Derived.doubts())
 	batch.Queue(`INSERT INTO measurement_key (id, wafer_id, measured_at) VALUES ($1, $2, $3)`, at.id, at.wafer, at.measuredAt)
 	batch.Queue(`
 		UPDATE wafer SET last_measured_at = $2, last_measurement_id = $3

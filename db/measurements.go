@@ -4,6 +4,7 @@ import (
 	"context"
 	"encoding/hex"
 	"encoding/json"
+	"errors"
 
 	"github.com/jackc/pgx/v5"
 
@@ -13,7 +14,7 @@ import (
 
 const selectMeasurement = `
 	SELECT m.id, m.wafer_id, w.name, m.kind, m.station, m.measured_at, m.drive_current_ma, m.dies, m.remeasured, m.is_current,
-		m.source_id, g.hash, m.source_layout, m.facts, m.notices,
+		m.source_id, g.hash, m.source_layout, m.facts, m.notices, m.derived_from, m.suspects,
 		ARRAY(SELECT s.quantity FROM summary s WHERE s.wafer_id = m.wafer_id AND s.measurement_id = m.id AND s.measured_at = m.measured_at),
 		la.name, la.wafer_diameter_mm, la.die_pitch_x_mm, la.die_pitch_y_mm, la.edge_exclusion_mm,
 		la.mark, la.mark_angle_deg, la.x_axis, la.y_axis, la.centre_x, la.centre_y
@@ -26,15 +27,18 @@ const selectMeasurement = `
 func (s *Store) scanMeasurement(row pgx.Row, declared declaredQuantities) (Measurement, error) {
 	var m Measurement
 	var wt waferTargets
-	var hash, layout, facts []byte
+	var hash, layout, facts, origins, suspects []byte
 	var names []string
 	into := []any{&m.ID, &m.WaferID, &m.Wafer, &m.Kind, &m.Station, &m.MeasuredAt, &m.DriveCurrentMA, &m.Dies, &m.Remeasured, &m.Current,
-		&m.SourceID, &hash, &layout, &facts, &m.Notices, &names}
-	if err := row.Scan(append(into, wt.into()[11:]...)...); err != nil {
+		&m.SourceID, &hash, &layout, &facts, &m.Notices, &origins, &suspects, &names}
+	if err := row.Scan(append(into, wt.into()[12:]...)...); err != nil {
 		return m, err
 	}
 	m.GridHash = hex.EncodeToString(hash)
 	if err := json.Unmarshal(facts, &m.Facts); err != nil {
+		return m, err
+	}
+	if err := errors.Join(json.Unmarshal(origins, &m.DerivedFrom), json.Unmarshal(suspects, &m.Suspects)); err != nil {
 		return m, err
 	}
 	if m.Layout = wt.wafer().Layout; m.Layout == nil {

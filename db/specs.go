@@ -6,9 +6,14 @@ import (
 	"time"
 
 	"github.com/jackc/pgx/v5"
+
+	"epitally/analytics/binning"
 )
 
-const selectSpec = `SELECT id, name, version, title, kind, products, document, stored_at, latest FROM spec`
+const selectSpec = `
+	SELECT id, name, version, title, kind, products, document, stored_at, latest, author, reason,
+		coalesce(valid_from::text, ''), coalesce(valid_until::text, '')
+	FROM spec`
 
 func collectSpecs(rows pgx.Rows, err error) ([]Spec, error) {
 	if err != nil {
@@ -57,8 +62,8 @@ func specsFor(ctx context.Context, q querier, product, kind string) ([]Spec, err
 
 // PutSpec stores document as the next version of its spec, or answers the
 // existing version when the document is the same as the latest. It marks
-// measurements of its products and kind stale. Name, Title, Kind, Products and
-// Document of s are used.
+// measurements of its products and kind stale. All of s is used
+// but ID, Version, StoredAt and Latest.
 func (l *Load) PutSpec(ctx context.Context, s Spec) (out Spec, err error) {
 	defer wrap(&err, "store specification %q", s.Name)
 	l.mu.Lock()
@@ -83,8 +88,10 @@ func (l *Load) PutSpec(ctx context.Context, s Spec) (out Spec, err error) {
 	}
 	batch := &pgx.Batch{}
 	batch.Queue(`UPDATE spec SET latest = false WHERE name = $1 AND latest`, s.Name)
-	batch.Queue(`INSERT INTO spec (name, version, title, kind, products, document, latest) VALUES ($1, $2, $3, $4, $5, $6, true)`,
-		s.Name, latest.Version+1, s.Title, s.Kind, s.Products, s.Document)
+	batch.Queue(`
+		INSERT INTO spec (name, version, title, kind, products, document, latest, author, reason, valid_from, valid_until)
+		VALUES ($1, $2, $3, $4, $5, $6, true, $7, $8, nullif($9, '')::date, nullif($10, '')::date)`,
+		s.Name, latest.Version+1, s.Title, s.Kind, s.Products, s.Document, s.Author, s.Reason, s.ValidFrom, s.ValidUntil)
 	batch.Queue(`
 		UPDATE measurement m SET stale = true
 		FROM wafer w JOIN product p ON p.id = w.product_id
@@ -154,4 +161,17 @@ func (s *Store) Profiles(ctx context.Context) (ps []Profile, err error) {
 		ps = []Profile{}
 	}
 	return ps, err
+}
+
+// NewSpec is what of a parsed document is stored; the author and the reason are
+// the publisher's, "" for a file that came by the drop folder.
+func NewSpec(parsed *binning.Spec, document, author, reason string) Spec {
+	day := func(t time.Time) string {
+		if t.IsZero() {
+			return ""
+		}
+		return t.Format(time.DateOnly)
+	}
+	return Spec{Name: parsed.Name, Title: parsed.Title, Kind: parsed.Kind, Products: parsed.Products, Document: document,
+		Author: author, Reason: reason, ValidFrom: day(parsed.ValidFrom), ValidUntil: day(parsed.ValidUntil)}
 }

@@ -27,3 +27,11 @@ func NewTallyOf(spec string, version int, cells []binning.Cell, counts []int, l 
 	}
 	return t
 }
+
+// AddRisks says of every bin what the measurement's uncertainty does to it.
+func (t *Tally) AddRisks(r binning.Conformity) {
+	for i := range r.Confident {
+		c := &t.Cells[i]
+		c.WronglyAccepted, c.WronglyRejected, c.Confident = &r.WronglyAccepted[i], &r.WronglyRejected[i], &r.Confident[i]
+	}
+}

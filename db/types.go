@@ -3,6 +3,7 @@ package db
 import (
 	"time"
 
+	"epitally/analytics/colour"
 	"epitally/analytics/quantity"
 	"epitally/analytics/uniformity"
 	"epitally/analytics/wafermap"
@@ -24,6 +25,8 @@ type Wafer struct {
 	Product string           `json:"product"`
 	Layout  *wafermap.Layout `json:"layout"`  // the product's layout; nil when there is no product
 	Targets []Target         `json:"targets"` // the recipe's targets
+
+	Colour *colour.PeakModel `json:"colour"` // the recipe's; null = the default line model
 }
 
 // Target is what a recipe means a quantity to be.
@@ -52,6 +55,8 @@ type Measurement struct {
 	Facts          map[string]string   `json:"facts"`
 	Notices        []string            `json:"notices"`
 	Quantities     []quantity.Quantity `json:"quantities"`
+	DerivedFrom    map[string]string   `json:"derived_from"` // quantity → what it was computed from; what is not named was measured
+	Suspects       []colour.Suspect    `json:"suspects"`     // what in it breaks physics
 }
 
 // Summary is the stored summary of one plane.
@@ -79,6 +84,11 @@ type TallyCell struct {
 	Name  string `json:"name"`
 	Class string `json:"class"` // "sellable", "unsellable", "reject", "untested"
 	Dies  int    `json:"dies"`
+	// Of bins under a specification or a station that states uncertainties, else
+	// nil; see binning.Conformity.
+	WronglyAccepted *float64 `json:"wrongly_accepted,omitempty"` // expected dies of the bin that truly lie outside it
+	WronglyRejected *float64 `json:"wrongly_rejected,omitempty"` // expected dies elsewhere that truly lie in it
+	Confident       *int     `json:"confident,omitempty"`        // dies of the bin that conform with 95 % confidence
 }
 
 // Spec is one version of a specification. Versions never change once stored.
@@ -92,6 +102,11 @@ type Spec struct {
 	Document string    `json:"document"` // the YAML as given
 	StoredAt time.Time `json:"stored_at"`
 	Latest   bool      `json:"latest"`
+	Author   string    `json:"author"` // who published the version, "" when it came as a file
+	Reason   string    `json:"reason"` // why, in their words
+	// First and last day it is meant for, as YYYY-MM-DD; "" = open.
+	ValidFrom  string `json:"valid_from"`
+	ValidUntil string `json:"valid_until"`
 }
 
 // Product is what die is made from a wafer, on which layout.
@@ -102,8 +117,9 @@ type Product struct {
 
 // Recipe is what was meant to grow.
 type Recipe struct {
-	Name    string   `json:"recipe"`
-	Targets []Target `json:"targets"`
+	Name    string            `json:"recipe"`
+	Targets []Target          `json:"targets"`
+	Colour  *colour.PeakModel `json:"colour"` // how its dominant wavelength follows from the peak; null = the default line model
 }
 
 // GrowthRun is one growth run of one reactor.

@@ -23,7 +23,7 @@ const selectWafer = `
 	SELECT w.id, w.name, w.lot,
 		coalesce(re.name, ''), ru.number, ru.grown_at,
 		coalesce(nullif(w.carrier, ''), ru.carrier, ''), w.ring, w.pocket,
-		coalesce(rc.name, ''), coalesce(p.name, ''),
+		coalesce(rc.name, ''), coalesce(p.name, ''), rc.colour_model,
 		la.name, la.wafer_diameter_mm, la.die_pitch_x_mm, la.die_pitch_y_mm, la.edge_exclusion_mm,
 		la.mark, la.mark_angle_deg, la.x_axis, la.y_axis, la.centre_x, la.centre_y` + fromWafer
 
@@ -44,7 +44,7 @@ type waferTargets struct {
 
 func (t *waferTargets) into() []any {
 	return []any{&t.w.ID, &t.w.Name, &t.w.Lot, &t.w.Reactor, &t.w.Run, &t.w.GrownAt, &t.w.Carrier, &t.w.Ring, &t.w.Pocket,
-		&t.w.Recipe, &t.w.Product, &t.name, &t.diameter, &t.px, &t.py, &t.edge, &t.mark, &t.angle, &t.xAxis, &t.yAxis, &t.cx, &t.cy}
+		&t.w.Recipe, &t.w.Product, &t.w.Colour, &t.name, &t.diameter, &t.px, &t.py, &t.edge, &t.mark, &t.angle, &t.xAxis, &t.yAxis, &t.cx, &t.cy}
 }
 
 func (t *waferTargets) wafer() *Wafer {

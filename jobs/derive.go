@@ -3,9 +3,12 @@ package jobs
 import (
 	"fmt"
 	"math"
+	"slices"
+	"time"
 
 	"epitally/analytics"
 	"epitally/analytics/binning"
+	"epitally/analytics/colour"
 	"epitally/analytics/quantity"
 	"epitally/analytics/uniformity"
 	"epitally/analytics/wafermap"
@@ -20,6 +23,9 @@ type deriver struct {
 	binners map[int64]*specBinner
 	codes   []uint16
 	counts  []int
+
+	dominant *colour.DominantTable // made when a measurement has x, y
+	models   colour.PeakTables
 }
 
 type frameKey struct {
@@ -50,11 +56,21 @@ type dies struct {
 	planes     []wafermap.Plane
 	quantities []quantity.Quantity
 	kind       string
+
+	measuredAt     time.Time
+	driveCurrentMA *float64
+	colour         *colour.PeakModel  // the recipe's; nil = the default
+	uncertainty    map[string]float64 // the station's, by quantity
 }
 
 func (d *deriver) derive(in dies, targets []db.Target, specs []db.Spec) (db.Derived, error) {
+	more, suspects, err := d.compute(in)
+	if err != nil {
+		return db.Derived{}, err
+	}
+	in.planes, in.quantities = slices.Concat(in.planes, more.planes), slices.Concat(in.quantities, more.quantities)
 	frame := d.frame(in.grid, in.layout)
-	var out db.Derived
+	out := db.Derived{Planes: more.planes, DerivedFrom: more.from, Suspects: suspects}
 	for i := range in.planes {
 		p, q := &in.planes[i], in.quantities[i]
 		target, window := targetOf(targets, q.Name)
@@ -67,9 +83,12 @@ func (d *deriver) derive(in dies, targets []db.Target, specs []db.Spec) (db.Deri
 		}
 	}
 	for _, stored := range specs {
-		t, err := d.tally(in, stored, frame)
+		t, valid, err := d.tally(in, stored, frame)
 		if err != nil {
 			return db.Derived{}, err
+		}
+		if !valid {
+			continue
 		}
 		out.Tallies = append(out.Tallies, db.NewTally{SpecID: stored.ID, Tally: t})
 	}
@@ -89,10 +108,12 @@ func (d *deriver) frame(g *wafermap.Grid, l wafermap.Layout) *uniformity.Frame {
 	return f
 }
 
-func (d *deriver) tally(in dies, stored db.Spec, frame *uniformity.Frame) (db.Tally, error) {
+// tally bins the dies under a specification that is in force on the day they were
+// measured; valid is false for any other.
+func (d *deriver) tally(in dies, stored db.Spec, frame *uniformity.Frame) (t db.Tally, valid bool, err error) {
 	sb, err := d.binner(stored)
-	if err != nil {
-		return db.Tally{}, err
+	if err != nil || !sb.spec.ValidOn(in.measuredAt) {
+		return t, false, err
 	}
 	n := in.grid.Len()
 	if cap(d.codes) < n {
@@ -105,9 +126,17 @@ func (d *deriver) tally(in dies, stored db.Spec, frame *uniformity.Frame) (db.Ta
 	counts := d.counts[:len(cells)]
 	planes := binning.PickPlanes(sb.spec, in.planes)
 	if err := sb.binner.Bin(d.codes[:n], counts, planes, frame.Include()); err != nil {
-		return db.Tally{}, fmt.Errorf("specification %s version %d: %w", stored.Name, stored.Version, err)
+		return t, false, fmt.Errorf("specification %s version %d: %w", stored.Name, stored.Version, err)
 	}
-	return db.NewTallyOf(stored.Name, stored.Version, cells, counts, &in.layout), nil
+	t = db.NewTallyOf(stored.Name, stored.Version, cells, counts, &in.layout)
+	if sb.spec.Uncertain(in.uncertainty) {
+		risk, err := sb.spec.Conformity(d.codes[:n], planes, frame.Include(), in.uncertainty, binning.Confidence)
+		if err != nil {
+			return t, false, err
+		}
+		t.AddRisks(risk)
+	}
+	return t, true, nil
 }
 
 func (d *deriver) binner(stored db.Spec) (*specBinner, error) {

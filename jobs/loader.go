@@ -6,12 +6,14 @@ import (
 	"fmt"
 	"io"
 	"log/slog"
+	"slices"
 	"time"
 
 	"golang.org/x/sync/errgroup"
 
 	"epitally/analytics"
 	"epitally/analytics/binning"
+	"epitally/analytics/quantity"
 	"epitally/db"
 	"epitally/jobs/reader"
 )
@@ -171,7 +173,7 @@ func hand[T any](ctx context.Context, to chan<- T, v T) error {
 
 // prepare derives everything that is stored beside the planes.
 func (l *Loader) prepare(ctx context.Context, tx *db.Load, m *reader.Measurement) (*db.NewMeasurement, error) {
-	about, err := tx.WaferContext(ctx, m.Wafer, m.Kind)
+	about, err := tx.WaferContext(ctx, m.Wafer, m.Kind, m.Station)
 	if err != nil {
 		return nil, err
 	}
@@ -179,7 +181,8 @@ func (l *Loader) prepare(ctx context.Context, tx *db.Load, m *reader.Measurement
 	if err := checkOnWafer(&m.Grid, m.Line, &layout, m.Wafer); err != nil {
 		return nil, err
 	}
-	d, err := l.deriver.derive(dies{grid: &m.Grid, layout: layout, planes: m.Planes, quantities: m.Quantities, kind: m.Kind},
+	d, err := l.deriver.derive(dies{grid: &m.Grid, layout: layout, planes: m.Planes, quantities: m.Quantities, kind: m.Kind,
+		measuredAt: m.MeasuredAt, driveCurrentMA: m.DriveCurrentMA, colour: about.Wafer.Colour, uncertainty: about.Uncertainty},
 		about.Wafer.Targets, about.Specs)
 	if err != nil {
 		return nil, err
@@ -215,7 +218,12 @@ func (l *Loader) recompute(ctx context.Context, id int64) error {
 	if err != nil {
 		return err
 	}
+	m.Quantities = slices.DeleteFunc(m.Quantities, func(q quantity.Quantity) bool { return m.DerivedFrom[q.Name] != "" })
 	planes, err := l.store.Planes(ctx, m)
+	if err != nil {
+		return err
+	}
+	uncertainty, err := l.store.StationUncertainty(ctx, m.Station)
 	if err != nil {
 		return err
 	}
@@ -223,7 +231,8 @@ func (l *Loader) recompute(ctx context.Context, id int64) error {
 	if err != nil {
 		return err
 	}
-	in := dies{grid: g, layout: *m.Layout, planes: planes, quantities: m.Quantities, kind: m.Kind}
+	in := dies{grid: g, layout: *m.Layout, planes: planes, quantities: m.Quantities, kind: m.Kind,
+		measuredAt: m.MeasuredAt, driveCurrentMA: m.DriveCurrentMA, colour: w.Colour, uncertainty: uncertainty}
 	d, err := l.deriver.derive(in, w.Targets, specs)
 	if err != nil {
 		return err
@@ -278,7 +287,7 @@ func (d *documentsOf) put(ctx context.Context, tx *db.Load) error {
 		if err != nil {
 			return err
 		}
-		_, err = tx.PutSpec(ctx, db.Spec{Name: s.Name, Title: s.Title, Kind: s.Kind, Products: s.Products, Document: d.text})
+		_, err = tx.PutSpec(ctx, db.NewSpec(s, d.text, "", ""))
 		return err
 	case "profile":
 		p, err := reader.ParseProfile([]byte(d.text))

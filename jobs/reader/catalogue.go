@@ -5,18 +5,26 @@ import (
 	"strings"
 
 	"epitally/analytics"
+	"epitally/analytics/colour"
 	"epitally/analytics/quantity"
 	"epitally/analytics/wafermap"
 	"epitally/analytics/yamldoc"
 )
 
 // Catalogue is what a fab makes: products with their layouts, recipes with their
-// targets, and quantities that are not built in.
+// targets, what stations' readings are worth, and quantities that are not built in.
 type Catalogue struct {
 	Name       string
 	Products   []CatalogueProduct
 	Recipes    []CatalogueRecipe
 	Quantities []quantity.Quantity
+	Stations   []CatalogueStation
+}
+
+// CatalogueStation is what one station's readings are worth.
+type CatalogueStation struct {
+	Name        string
+	Uncertainty map[string]float64 // standard uncertainty of one reading by quantity, in its unit
 }
 
 // CatalogueProduct is one product and its die grid. The layout's name is the
@@ -30,6 +38,7 @@ type CatalogueProduct struct {
 type CatalogueRecipe struct {
 	Name    string
 	Targets []CatalogueTarget
+	Colour  *colour.PeakModel // how its dominant wavelength follows from the peak; nil = the default line model
 }
 
 // CatalogueTarget is the value a recipe aims at and the half width of the window
@@ -52,7 +61,7 @@ func ParseCatalogue(document []byte) (Catalogue, error) {
 	if err != nil {
 		return Catalogue{}, err
 	}
-	f, err := root.Fields("catalogue!", "products", "recipes", "quantities")
+	f, err := root.Fields("catalogue!", "products", "recipes", "quantities", "stations")
 	if err != nil {
 		return Catalogue{}, err
 	}
@@ -70,8 +79,11 @@ func ParseCatalogue(document []byte) (Catalogue, error) {
 	if err := c.each(f["recipes"], c.addRecipe); err != nil {
 		return Catalogue{}, err
 	}
-	if len(c.Products)+len(c.Recipes)+len(c.Quantities) == 0 {
-		return Catalogue{}, root.Fault("add products, recipes or quantities", "the catalogue holds nothing")
+	if err := c.each(f["stations"], c.addStation); err != nil {
+		return Catalogue{}, err
+	}
+	if len(c.Products)+len(c.Recipes)+len(c.Quantities)+len(c.Stations) == 0 {
+		return Catalogue{}, root.Fault("add products, recipes, quantities or stations", "the catalogue holds nothing")
 	}
 	return c, nil
 }
@@ -232,7 +244,7 @@ func layoutFault(n yamldoc.Node, f map[string]yamldoc.Node, err error) error {
 }
 
 func (c *Catalogue) addRecipe(n yamldoc.Node) (named yamldoc.Node, name string, err error) {
-	f, err := n.Fields("recipe!", "targets")
+	f, err := n.Fields("recipe!", "targets", "colour")
 	if err != nil {
 		return n, "", err
 	}
@@ -249,6 +261,11 @@ func (c *Catalogue) addRecipe(n yamldoc.Node) (named yamldoc.Node, name string, 
 			if err := c.addTarget(&r, item); err != nil {
 				return n, "", err
 			}
+		}
+	}
+	if at, ok := f["colour"]; ok {
+		if r.Colour, err = colourIn(at); err != nil {
+			return n, "", err
 		}
 	}
 	c.Recipes = append(c.Recipes, r)
