@@ -96,6 +96,8 @@ func (s *Server) routes() []route {
 		kept(get(root+"/specifications/{name}/versions/{version}", "getSpecificationVersion", "One version of a specification", s.getSpecVersion,
 			asJSON(specDetailOut{}), asMedia(mediaYAML))),
 
+		post(root+"/specifications/trial", "trySpecification", "Try the specification in the body, which is not stored, on many wafers, and check it", s.trySpec, asJSON(trialOut{})),
+
 		get(root+"/quantities", "listQuantities", "Quantities, built in and declared", s.listQuantities, asJSON(quantitiesOut{}), csv),
 		get(root+"/products", "listProducts", "Products with their layouts", s.listProducts, asJSON(productsOut{}), csv),
 		get(root+"/recipes", "listRecipes", "Recipes with their targets", s.listRecipes, asJSON(recipesOut{}), csv),

@@ -28,16 +28,17 @@ type Config struct {
 // Server answers HTTP requests. It holds *db.Store itself rather than an
 // interface of its own: handlers use nearly every reading method of it.
 type Server struct {
-	echo  *echo.Echo
-	store *db.Store
-	pages *web.Pages
-	log   *slog.Logger
-	now   func() time.Time
-	zone  *time.Location
-	newID func() string
-	drop  string
-	press *compressor
-	specs specCache
+	echo   *echo.Echo
+	store  *db.Store
+	pages  *web.Pages
+	log    *slog.Logger
+	now    func() time.Time
+	zone   *time.Location
+	newID  func() string
+	drop   string
+	press  *compressor
+	specs  specCache
+	chosen selections
 	// document is the OpenAPI document, and documentTag its strong ETag.
 	document    []byte
 	documentTag string

@@ -115,9 +115,14 @@ func (s *Server) answerSpec(c echo.Context, status int, format string, sp *db.Sp
 		Quantities: parsed.Quantities(), Cells: mapped(parsed.Cells(), wireCell)})
 }
 
+type publishParams struct {
+	Author string `query:"author" doc:"who publishes the version"`
+	Reason string `query:"reason" doc:"why"`
+}
+
 // storeSpec stores the document of the body as a new version. The document that
 // is the latest version already is answered with 200 and that version.
-func (s *Server) storeSpec(c echo.Context, _ noParams) error {
+func (s *Server) storeSpec(c echo.Context, p publishParams) error {
 	document, err := readDocument(c)
 	if err != nil {
 		return err
@@ -126,7 +131,7 @@ func (s *Server) storeSpec(c echo.Context, _ noParams) error {
 	if err != nil {
 		return err
 	}
-	stored, fresh, err := s.putSpec(c, parsed, document)
+	stored, fresh, err := s.putSpec(c, parsed, document, p)
 	if err != nil {
 		return err
 	}
@@ -140,7 +145,7 @@ func (s *Server) storeSpec(c echo.Context, _ noParams) error {
 
 // putSpec stores a specification as a load of its own, so that the list of
 // sources tells where it came from.
-func (s *Server) putSpec(c echo.Context, parsed *binning.Spec, document []byte) (stored *db.Spec, fresh bool, err error) {
+func (s *Server) putSpec(c echo.Context, parsed *binning.Spec, document []byte, p publishParams) (stored *db.Spec, fresh bool, err error) {
 	ctx := c.Request().Context()
 	before, err := s.store.Spec(ctx, parsed.Name, 0)
 	switch {
@@ -155,7 +160,7 @@ func (s *Server) putSpec(c echo.Context, parsed *binning.Spec, document []byte) 
 		return nil, false, err
 	}
 	defer load.Rollback(ctx)
-	put, err := load.PutSpec(ctx, db.Spec{Name: parsed.Name, Title: parsed.Title, Kind: parsed.Kind, Products: parsed.Products, Document: string(document)})
+	put, err := load.PutSpec(ctx, db.NewSpec(parsed, string(document), p.Author, p.Reason))
 	if err != nil {
 		return nil, false, err
 	}

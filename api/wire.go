@@ -69,6 +69,10 @@ func wireMeasurement(m db.Measurement) measurementOut {
 	if m.Facts == nil {
 		m.Facts = map[string]string{}
 	}
+	if m.DerivedFrom == nil {
+		m.DerivedFrom = map[string]string{}
+	}
+	m.Suspects = full(m.Suspects)
 	return measurementOut{m, mapped(m.Quantities, wireQuantity)}
 }
 
@@ -76,12 +80,14 @@ func wireMeasurement(m db.Measurement) measurementOut {
 // does not read for a list.
 type measurementListed struct {
 	db.Measurement
-	Grid       *omitted `json:"grid,omitempty"`
-	Layout     *omitted `json:"layout,omitempty"`
-	LayoutDies *omitted `json:"layout_dies,omitempty"`
-	Facts      *omitted `json:"facts,omitempty"`
-	Notices    *omitted `json:"notices,omitempty"`
-	Quantities *omitted `json:"quantities,omitempty"`
+	Grid        *omitted `json:"grid,omitempty"`
+	Layout      *omitted `json:"layout,omitempty"`
+	LayoutDies  *omitted `json:"layout_dies,omitempty"`
+	Facts       *omitted `json:"facts,omitempty"`
+	Notices     *omitted `json:"notices,omitempty"`
+	DerivedFrom *omitted `json:"derived_from,omitempty"`
+	Suspects    *omitted `json:"suspects,omitempty"`
+	Quantities  *omitted `json:"quantities,omitempty"`
 }
 
 type measurementSummaryOut struct {

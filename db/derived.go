@@ -127,7 +127,7 @@ func (s *Store) ReplaceDerived(ctx context.Context, measurementID int64, d Deriv
 		batch.Queue(`
 			UPDATE measurement SET stale = false, state = $4, main_quantity = $5, derived_from = $6, suspects = $7
 			WHERE wafer_id = $1 AND id = $2 AND measured_at = $3`,
-			at.wafer, at.id, at.measuredAt, d.State, mainQuantity(d.quantities()), d.origins(), d.doubts())
+			at.wafer, at.id, at.measuredAt, d.State, d.mainQuantity(), d.origins(), d.doubts())
 		return tx.SendBatch(ctx, batch).Close()
 	})
 }

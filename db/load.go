@@ -307,24 +307,30 @@ func (l *Load) queueMeasurement(batch *pgx.Batch, at rowKey, m *NewMeasurement, 
 		SELECT $1, $2, $3, $4, $5, $6, $7, $8,
 			NOT EXISTS (SELECT FROM measurement WHERE wafer_id = $1 AND kind = $4 AND is_current), $9, $10, $11, $12, $13, $14, $15, $16, $17`,
 		at.wafer, at.id, at.measuredAt, m.Kind, m.Station, m.DriveCurrentMA, m.Grid.Len(), m.Remeasured,
-		m.Derived.State, mainQuantity(m.Derived.quantities()), l.sourceID, gridID, layout, facts, notices, m.Derived.origins(), m.Derived.doubts())
+		m.Derived.State, m.Derived.mainQuantity(), l.sourceID, gridID, layout, facts, notices, m.Derived.origins(), m.Derived.doubts())
 	batch.Queue(`INSERT INTO measurement_key (id, wafer_id, measured_at) VALUES ($1, $2, $3)`, at.id, at.wafer, at.measuredAt)
 	batch.Queue(`
 		UPDATE wafer SET last_measured_at = $2, last_measurement_id = $3
 		WHERE id = $1 AND (last_measured_at IS NULL OR last_measured_at <= $2)`, at.wafer, at.measuredAt, at.id)
 }
 
-// mainQuantity is what lists show of a measurement: the dominant wavelength,
-// else the peak, else its first quantity.
-func mainQuantity(qs []quantity.Quantity) string {
-	for _, want := range []string{"dominant_wavelength_nm", "peak_wavelength_nm"} {
-		for _, q := range qs {
-			if q.Name == want {
-				return want
-			}
-		}
+// mainQuantity is what lists show of a measurement: the dominant wavelength that
+// was measured, else the peak, else the dominant wavelength that was computed,
+// else its first quantity.
+func (d *Derived) mainQuantity() string {
+	qs := d.quantities()
+	has := func(name string) bool {
+		return slices.ContainsFunc(qs, func(q quantity.Quantity) bool { return q.Name == name })
 	}
-	if len(qs) == 0 {
+	const dominant, peak = "dominant_wavelength_nm", "peak_wavelength_nm"
+	switch {
+	case has(dominant) && d.DerivedFrom[dominant] == "":
+		return dominant
+	case has(peak):
+		return peak
+	case has(dominant):
+		return dominant
+	case len(qs) == 0:
 		return ""
 	}
 	return qs[0].Name

@@ -5,9 +5,12 @@ import (
 	"encoding/hex"
 	"encoding/json"
 	"errors"
+	"fmt"
+	"slices"
 
 	"github.com/jackc/pgx/v5"
 
+	"epitally/analytics"
 	"epitally/analytics/quantity"
 	"epitally/analytics/wafermap"
 )
@@ -75,19 +78,7 @@ func (s *Store) layoutDies(l *wafermap.Layout) int {
 // Measurements lists a wafer's measurements, newest first.
 func (s *Store) Measurements(ctx context.Context, waferID int64) (ms []Measurement, err error) {
 	defer wrap(&err, "measurements of wafer %d", waferID)
-	declared, err := s.declared(ctx)
-	if err != nil {
-		return nil, err
-	}
-	rows, err := s.pool.Query(ctx, selectMeasurement+` WHERE m.wafer_id = $1 ORDER BY m.measured_at DESC, m.id DESC`, waferID)
-	if err != nil {
-		return nil, err
-	}
-	ms, err = pgx.CollectRows(rows, func(row pgx.CollectableRow) (Measurement, error) { return s.scanMeasurement(row, declared) })
-	if ms == nil {
-		ms = []Measurement{}
-	}
-	return ms, err
+	return s.collectMeasurements(ctx, ` WHERE m.wafer_id = $1 ORDER BY m.measured_at DESC, m.id DESC`, waferID)
 }
 
 // Measurement finds one by its number.
@@ -107,6 +98,59 @@ func (s *Store) Measurement(ctx context.Context, id int64) (m *Measurement, err 
 		return nil, err
 	}
 	return &found, nil
+}
+
+// Selection says which wafers a specification is looked at with.
+type Selection struct {
+	Kind     string
+	Products []string // none = of any product
+	Last     int      // so many of the newest
+}
+
+// SelectMeasurements lists current measurements, newest first.
+func (s *Store) SelectMeasurements(ctx context.Context, sel Selection) (ms []Measurement, err error) {
+	defer wrap(&err, "the last %d measurements of kind %q", sel.Last, sel.Kind)
+	products := sel.Products
+	if products == nil {
+		products = []string{}
+	}
+	return s.collectMeasurements(ctx, `
+		WHERE m.is_current AND m.kind = $1 AND ($2::text[] = '{}' OR p.name = ANY ($2))
+		ORDER BY m.measured_at DESC, m.id DESC LIMIT $3`, sel.Kind, products, sel.Last)
+}
+
+// MeasurementsByID lists measurements by their numbers, newest first; a number
+// that is not known is analytics.ErrNotFound.
+func (s *Store) MeasurementsByID(ctx context.Context, ids []int64) (ms []Measurement, err error) {
+	defer wrap(&err, "%d measurements", len(ids))
+	ms, err = s.collectMeasurements(ctx, `
+		JOIN measurement_key k ON k.id = m.id AND k.wafer_id = m.wafer_id AND k.measured_at = m.measured_at
+		WHERE k.id = ANY ($1) ORDER BY m.measured_at DESC, m.id DESC`, ids)
+	if err != nil {
+		return nil, err
+	}
+	for _, id := range ids {
+		if !slices.ContainsFunc(ms, func(m Measurement) bool { return m.ID == id }) {
+			return nil, fmt.Errorf("there is no measurement %d: %w", id, analytics.ErrNotFound)
+		}
+	}
+	return ms, nil
+}
+
+func (s *Store) collectMeasurements(ctx context.Context, where string, args ...any) ([]Measurement, error) {
+	declared, err := s.declared(ctx)
+	if err != nil {
+		return nil, err
+	}
+	rows, err := s.pool.Query(ctx, selectMeasurement+where, args...)
+	if err != nil {
+		return nil, err
+	}
+	ms, err := pgx.CollectRows(rows, func(row pgx.CollectableRow) (Measurement, error) { return s.scanMeasurement(row, declared) })
+	if ms == nil {
+		ms = []Measurement{}
+	}
+	return ms, err
 }
 
 // Summaries lists a measurement's summaries in display order.

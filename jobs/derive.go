@@ -78,7 +78,7 @@ func (d *deriver) derive(in dies, targets []db.Target, specs []db.Spec) (db.Deri
 		out.Summaries = append(out.Summaries, s)
 		m := frame.Paint(p, s.Q01, s.Q99)
 		out.SmallMaps = append(out.SmallMaps, db.SmallMap{Quantity: q, Size: m.Size, Low: m.Low, High: m.High, Cells: m.Cells})
-		if !math.IsNaN(target) && (out.State == "" || q.Name == "dominant_wavelength_nm") {
+		if !math.IsNaN(target) && (out.State == "" || q.Name == "dominant_wavelength_nm" && more.from[q.Name] == "") {
 			out.State = uniformity.ColourState(s, window)
 		}
 	}

@@ -25,8 +25,11 @@ type BinPlots struct {
 	Counts []int // dies per code; nil = none counted yet
 	// Density makes the address of the picture of the dies behind a plot; nil = none.
 	Density func(DensityPlot) string
-	Whole   bool // chromaticities: the whole diagram, not only the cells' surroundings
-	Edit    bool // corners and edges can be moved
+	// Boxes are the scales that plots are to have, by their ids: left, right, bottom,
+	// top. A plot without one chooses its own.
+	Boxes map[string][4]float64
+	Whole bool // chromaticities: the whole diagram, not only the cells' surroundings
+	Edit  bool // corners and edges can be moved
 }
 
 // DensityPlot is what a picture of dies shows: how many have which values.
@@ -104,6 +107,14 @@ const (
 
 func newFrame(left, right, bottom, top, height float64) *frame {
 	return &frame{left: left, right: right, bottom: bottom, top: top, width: plotWidth, height: height}
+}
+
+// fitted takes the scales asked for, if any.
+func (b BinPlots) fitted(f *frame, id string) *frame {
+	if box, ok := b.Boxes[id]; ok {
+		f.left, f.right, f.bottom, f.top = box[0], box[1], box[2], box[3]
+	}
+	return f
 }
 
 func (f *frame) areaWidth() float64  { return f.width - marginLeft - marginRest }

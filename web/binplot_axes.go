@@ -12,14 +12,14 @@ import (
 func (b BinPlots) grid(x, y *binning.Axis, dx, dy binning.Dimension, id string) BinPlot {
 	left, right := axisSpan(x)
 	bottom, top := axisSpan(y)
-	f := newFrame(left, right, bottom, top, plotHeight)
+	f := b.fitted(newFrame(left, right, bottom, top, plotHeight), id)
 	f.xPlaces, f.yPlaces = placesOf(x.Quantity), placesOf(y.Quantity)
 	p := BinPlot{ID: id, Title: fmt.Sprintf("Axes %s and %s", x.Name, y.Name)}
 	f.open(id, fmt.Sprintf("%s: %d by %d cells over %s and %s", p.Title, len(x.Names), len(y.Names), quantityTitle(x.Quantity), quantityTitle(y.Quantity)))
 	f.clipped(id)
 	if b.Density != nil {
 		f.density(b.Density(DensityPlot{X: x.Quantity, Y: y.Quantity, Space: binning.SpaceOwn,
-			Left: left, Right: right, Bottom: bottom, Top: top, Width: int(f.areaWidth()), Height: int(f.areaHeight())}))
+			Left: f.left, Right: f.right, Bottom: f.bottom, Top: f.top, Width: int(f.areaWidth()), Height: int(f.areaHeight())}))
 	}
 	for i := range x.Names {
 		for j := range y.Names {
@@ -65,13 +65,13 @@ func (b BinPlots) gridCell(f *frame, x, y [2]float64, name string, has func(int)
 // line draws one axis over the histogram of its dies.
 func (b BinPlots) line(x *binning.Axis, d binning.Dimension, id string) BinPlot {
 	left, right := axisSpan(x)
-	f := newFrame(left, right, 0, 1, 300)
+	f := b.fitted(newFrame(left, right, 0, 1, 300), id)
 	f.xPlaces = placesOf(x.Quantity)
 	p := BinPlot{ID: id, Title: "Axis " + x.Name}
 	f.open(id, fmt.Sprintf("%s: %d cells over %s", p.Title, len(x.Names), quantityTitle(x.Quantity)))
 	f.clipped(id)
 	if b.Density != nil {
-		f.density(b.Density(DensityPlot{X: x.Quantity, Space: binning.SpaceOwn, Left: left, Right: right, Top: 1,
+		f.density(b.Density(DensityPlot{X: x.Quantity, Space: binning.SpaceOwn, Left: f.left, Right: f.right, Top: 1,
 			Width: int(f.areaWidth()), Height: int(f.areaHeight())}))
 	}
 	for i, name := range x.Names {

@@ -13,7 +13,7 @@ import (
 
 // region draws the cells of a region in their plane, the dies behind them.
 func (b BinPlots) region(r *binning.Region, d binning.Dimension, id string) BinPlot {
-	f := b.regionFrame(r)
+	f := b.fitted(b.regionFrame(r), id)
 	p := BinPlot{ID: id, Title: "Region " + r.Name}
 	xTitle, yTitle := spaceTitles(r)
 	f.open(id, fmt.Sprintf("%s: %d cells over %s and %s", p.Title, len(r.Cells), xTitle, yTitle))
@@ -28,8 +28,9 @@ func (b BinPlots) region(r *binning.Region, d binning.Dimension, id string) BinP
 	for i := range r.Cells {
 		b.regionCell(f, r, d, i)
 	}
+	taken := f.handleRoom(r, b.Edit)
 	for i := range r.Cells {
-		b.regionLabel(f, r, d, i)
+		b.regionLabel(f, r, d, i, &taken)
 	}
 	if b.Edit {
 		f.cornerHandles(r)
@@ -187,23 +188,47 @@ func (b BinPlots) regionCell(f *frame, r *binning.Region, d binning.Dimension, i
 	}
 }
 
-// regionLabel names a cell and its dies in its middle where there is room.
-func (b BinPlots) regionLabel(f *frame, r *binning.Region, d binning.Dimension, i int) {
+// regionLabel names a cell and its dies where there is room: in its middle, else
+// moved towards an end of it, away from labels that stand already.
+func (b BinPlots) regionLabel(f *frame, r *binning.Region, d binning.Dimension, i int, taken *[]textBox) {
 	s := &r.Cells[i].Shapes[0]
 	x, y, width, height := middleOf(f, s.Outline)
 	name := r.Cells[i].Name
-	room := width > 9*float64(len(name)) && height > 16
-	if !room {
-		return
-	}
 	n, known := b.countOf(inCell(d, i))
 	count := Count(n)
-	if !known || height < 40 || width < 9*float64(len(count)) {
-		f.text("cell-name", x, y+5, "middle", name)
+	lines, needed := 1, 9*float64(len(name))
+	if known && height > 44 {
+		lines, needed = 2, max(needed, 8.5*float64(len(count)))
+	}
+	if width < needed || height < 20 {
 		return
 	}
-	f.text("cell-name", x, y-2, "middle", name)
-	f.text("cell-count", x, y+16, "middle", count)
+	for _, move := range [][2]float64{{0, 0}, {0, 0.28}, {0, -0.28}, {-0.22, 0.22}, {0.22, -0.22}, {0.25, 0.1}, {-0.25, -0.1}} {
+		at := textBox{x + move[0]*width, y + move[1]*height, needed, 19 * float64(lines)}
+		if at.meetsAny(*taken) {
+			continue
+		}
+		*taken = append(*taken, at)
+		if lines == 1 {
+			f.text("cell-name", at.x, at.y+5, "middle", name)
+			return
+		}
+		f.text("cell-name", at.x, at.y-3, "middle", name)
+		f.text("cell-count", at.x, at.y+15, "middle", count)
+		return
+	}
+}
+
+// textBox is the room of a label: its middle and extent.
+type textBox struct{ x, y, width, height float64 }
+
+func (t textBox) meetsAny(others []textBox) bool {
+	for _, o := range others {
+		if math.Abs(t.x-o.x) < (t.width+o.width)/2 && math.Abs(t.y-o.y) < (t.height+o.height)/2 {
+			return true
+		}
+	}
+	return false
 }
 
 // middleOf is the mean of the corners in the picture, with its extent.
@@ -215,6 +240,25 @@ func middleOf(f *frame, outline [][2]float64) (x, y, width, height float64) {
 		low, high = [2]float64{min(low[0], p[0]), min(low[1], p[1])}, [2]float64{max(high[0], p[0]), max(high[1], p[1])}
 	}
 	return x, y, high[0] - low[0], high[1] - low[1]
+}
+
+// handleRoom is where corners are drawn to be taken hold of.
+func (f *frame) handleRoom(r *binning.Region, edit bool) (taken []textBox) {
+	if !edit {
+		return nil
+	}
+	for _, c := range r.Cells {
+		for _, s := range c.Shapes {
+			corners := s.Outline
+			if s.Kind == "circle" {
+				corners = [][2]float64{s.Centre}
+			}
+			for _, p := range corners {
+				taken = append(taken, textBox{f.x(p[0]), f.y(p[1]), 16, 16})
+			}
+		}
+	}
+	return taken
 }
 
 // cornerHandles lets corners and the edges between them be moved. Corners at one

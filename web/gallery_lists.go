@@ -58,16 +58,14 @@ func cannedSpecs() BinsPage {
 func cannedSpec() BinPage {
 	p := BinPage{Base: dated(Base{Title: "harbour-blue v3", Section: "bins", Charts: true}), Name: "harbour-blue", Version: 3,
 		Facts:    []Fact{{Name: "title", Value: "Harbour blue, general lighting"}, {Name: "products", Value: "harbour"}, {Name: "bins", Value: "probe measurements"}},
-		Versions: []Fact{{Name: "v3", Value: Moment(galleryNow, galleryZone)}, {Name: "v2", Value: Moment(galleryNow.Add(-900*time.Hour), galleryZone), Href: "#"}},
-		Axes:     []SpecAxis{{"Dominant wavelength", "nm", "453.5, 454.2, 454.9, 455.6, 456.3"}, {"Forward voltage", "V", "3.04, 3.08, 3.12, 3.15"}},
+		Versions: []VersionLine{{Name: "v3", StoredAt: Moment(galleryNow, galleryZone), Author: "R. Aalto", Reason: "flux classes as ratios"}, {Name: "v2", StoredAt: Moment(galleryNow.Add(-900*time.Hour), galleryZone), Href: "#"}},
+		Last:     []Option{{"20", "the last 20", true}},
+		Views:    []Option{{"cells", "the cells", true}, {"whole", "all of it", false}},
 		Needs:    []Fact{{Name: "Dominant wavelength", Value: "nm"}, {Name: "Forward voltage", Value: "V"}},
-		Document: "specification: harbour-blue\ntitle: Harbour blue, general lighting\n"}
-	for i, c := range cannedWafer().Spec.Cells {
-		if i < 12 {
-			p.Bins = append(p.Bins, SpecCell{c.Name, c.Class.String()})
-		} else if i < 15 {
-			p.Rejects = append(p.Rejects, SpecCell{c.Name, c.Class.String()})
-		}
+		Document: cannedDocument}
+	p.Look, p.Editor = cannedLook(), &SpecEditor{Try: "#", Publish: "#", Next: 4}
+	for _, c := range cannedWafer().Spec.Cells[12:15] {
+		p.Rejects = append(p.Rejects, SpecCell{c.Name, c.Class.String()})
 	}
 	var yields []WaferYield
 	for i := range 40 {

@@ -71,6 +71,20 @@ func (p *Pages) Render(w io.Writer, name string, page any) error {
 	return err
 }
 
+// RenderPart writes one named template of a page, for a script to put in place.
+func (p *Pages) RenderPart(w io.Writer, name, part string, data any) error {
+	view, ok := p.views[name]
+	if !ok {
+		return fmt.Errorf("there is no page %q: use one of %s", name, strings.Join(pageNames, ", "))
+	}
+	var b bytes.Buffer
+	if err := view.ExecuteTemplate(&b, part, data); err != nil {
+		return fmt.Errorf("page %s, part %s: %w", name, part, err)
+	}
+	_, err := w.Write(b.Bytes())
+	return err
+}
+
 func (p *Pages) bytes(name string, page any) ([]byte, error) {
 	view, ok := p.views[name]
 	if !ok {

@@ -144,3 +144,22 @@ func BenchmarkConformityPolygons(b *testing.B) {
 	}
 	b.ReportMetric(float64(dies)*float64(b.N)/b.Elapsed().Seconds()/1e6, "Mdies/s")
 }
+
+// BenchmarkConformityAxes works out the risks of three axes whose cells are about
+// ten standard uncertainties wide.
+func BenchmarkConformityAxes(b *testing.B) {
+	const dies = 50_000
+	s := mustParse(b, strings.Replace(threeQuantities, "kind: probe", "kind: probe\nuncertainty: {dominant_wavelength_nm: 0.12, radiant_flux_mw: 0.3, forward_voltage_v: 0.004}", 1))
+	planes := PickPlanes(s, benchWafer(dies, 1))
+	codes, counts := make([]uint16, dies), make([]int, len(s.Cells()))
+	if err := s.Bin(codes, counts, planes, nil); err != nil {
+		b.Fatal(err)
+	}
+	b.ReportAllocs()
+	for b.Loop() {
+		if _, err := s.Conformity(codes, planes, nil, nil, Confidence); err != nil {
+			b.Fatal(err)
+		}
+	}
+	b.ReportMetric(float64(dies)*float64(b.N)/b.Elapsed().Seconds()/1e6, "Mdies/s")
+}

@@ -7,6 +7,7 @@ import (
 
 	"epitally/analytics/colour"
 	"epitally/analytics/quantity"
+	"epitally/analytics/wafermap"
 )
 
 // Finding is something about a specification that whoever uses it should know. A
@@ -117,22 +118,10 @@ func cellOverlap(a, b *RegionCell) (sum float64) {
 	}
 	for i := range a.Shapes {
 		for j := range b.Shapes {
-			sum += overlapArea(coarse(&a.Shapes[i]), coarse(&b.Shapes[j]))
+			sum += overlapArea(a.Shapes[i].rough, b.Shapes[j].rough)
 		}
 	}
 	return sum
-}
-
-// coarse draws a circle with a quarter of its points, enough for an area.
-func coarse(s *Shape) []ring {
-	if s.Kind != "circle" {
-		return s.rings
-	}
-	var r ring
-	for i := 0; i < len(s.rings[0]); i += 4 {
-		r = append(r, s.rings[0][i])
-	}
-	return []ring{r}
 }
 
 // nearCornerLimit is how close corners of neighbours must be to count as meant to
@@ -289,4 +278,40 @@ func (p *plan) accepts(low, high float64) bool {
 		}
 	}
 	return false
+}
+
+// HasOverlaps reports whether any finding is an overlap, whose dies can be counted.
+func (s *Spec) HasOverlaps(found []Finding) bool {
+	for i := range found {
+		if found[i].Kind == Overlap {
+			return true
+		}
+	}
+	return false
+}
+
+// CountOverlaps adds the dies of one measurement that lie in two cells at once to
+// the overlaps among the findings of Check. planes and include are as for Bin; a
+// measurement that lacks a quantity adds none.
+func (s *Spec) CountOverlaps(found []Finding, planes []*wafermap.Plane, include []bool) {
+	for i := range found {
+		f := &found[i]
+		if f.Kind != Overlap {
+			continue
+		}
+		rp := &s.regionPlans[f.region]
+		x, y := planes[rp.columns[0]], planes[rp.columns[1]]
+		if x == nil || y == nil {
+			continue
+		}
+		a, b := &rp.Cells[f.pair[0]], &rp.Cells[f.pair[1]]
+		for d := range x.Len() {
+			if include != nil && !include[d] {
+				continue
+			}
+			if p := rp.place(x.Value(d), y.Value(d)); a.holds(p, rp.Space) && b.holds(p, rp.Space) {
+				f.Dies++
+			}
+		}
+	}
 }

@@ -51,12 +51,14 @@ func (s *Spec) Conformity(codes []uint16, planes []*wafermap.Plane, include []bo
 	if planes == nil {
 		return out, nil
 	}
-	dims := s.chances(u)
+	w := conformityWork{dims: s.chances(u)}
+	for i := range w.dims {
+		w.dims[i].take(planes)
+	}
 	for i, c := range codes {
-		if include != nil && !include[i] || !s.open(int(c)) {
-			continue
+		if (include == nil || include[i]) && !s.decided[c] {
+			w.add(&out, i, int(c), confidence)
 		}
-		out.add(s, dims, planes, i, int(c), confidence)
 	}
 	return out, nil
 }
@@ -92,55 +94,17 @@ func (s *Spec) bins() int {
 	return len(s.cells)
 }
 
-// open reports whether a code leaves the die's place among the bins to its
-// readings: the bins, and the rejects of regions and axes.
-func (s *Spec) open(code int) bool { return !s.decided[code] }
-
-// add puts die i into the sums. Almost every die is far from every edge and
-// conforms for certain, to its own bin alone.
-func (o *Conformity) add(s *Spec, dims []chance, planes []*wafermap.Plane, i, code int, confidence float64) {
-	certain := true
-	for d := range dims {
-		certain = dims[d].at(planes, i) && certain
-	}
-	own := code < len(o.Confident)
-	if certain {
-		if own {
-			o.Confident[code]++
-		}
-		return
-	}
-	p := o.spread(dims, code, 0, 0, 1)
-	if own {
-		o.WronglyAccepted[code] += 1 - p
-		if p >= confidence {
-			o.Confident[code]++
-		}
-	}
-}
-
-// spread walks the bins that the die may truly be in and gives each its
-// probability; it returns that of the die's own bin.
-func (o *Conformity) spread(dims []chance, own, dim, code int, p float64) float64 {
-	if dim == len(dims) {
-		if code != own {
-			o.WronglyRejected[code] += p
-			return 0
-		}
-		return p
-	}
-	sum := 0.0
-	for _, c := range dims[dim].cells {
-		sum += o.spread(dims, own, dim+1, code+c.code, p*c.p)
-	}
-	return sum
+// conformityWork works out dies one after the other.
+type conformityWork struct {
+	dims       []chance
+	bins, next []cellChance // that the die at hand may truly be in
 }
 
 // chance works out in which cells of one dimension a die may truly be.
-type chance struct {
-	cells []cellChance // of the die at hand
-	axis  *axisChance
-	plane *regionChance
+type chance interface {
+	take(planes []*wafermap.Plane)
+	// at gives the cells of die i with their probabilities.
+	at(i int) []cellChance
 }
 
 type cellChance struct {
@@ -148,54 +112,48 @@ type cellChance struct {
 	p    float64
 }
 
-// negligible is a probability that is left out of the sums.
-const negligible = 1e-7
+const (
+	// farU is how many standard uncertainties away an edge is of no account:
+	// Φ(−4) = 3e−5, under what a share is shown to.
+	farU = 4
+	// negligible is a probability that is left out of the sums.
+	negligible = 1e-6
+)
 
-// farU is how many standard uncertainties away an edge is of no account:
-// Φ(−5.5) = 2e−8.
-const farU = 5.5
-
-// at sets the cells of die i, and reports whether there is no doubt: it is in one
-// cell for certain, or certainly in none.
-func (c *chance) at(planes []*wafermap.Plane, i int) bool {
-	c.cells = c.cells[:0]
-	if c.axis != nil {
-		return c.axis.at(&c.cells, planes[c.axis.column].Value(i))
-	}
-	return c.plane.at(&c.cells, point{planes[c.plane.columns[0]].Value(i), planes[c.plane.columns[1]].Value(i)})
-}
-
-type axisChance struct {
-	column int
-	edges  []float64
-	stride int
-	u      float64
-}
-
-func (a *axisChance) at(cells *[]cellChance, v float64) bool {
-	last := len(a.edges) - 1
-	below := a.u > 0
-	for i := 0; i < last; i++ {
-		low, high := a.edges[i], a.edges[i+1]
-		if a.u == 0 {
-			if v >= low && (v < high || i == last-1 && v == high) {
-				*cells = append(*cells, cellChance{i * a.stride, 1})
+// add puts die i into the sums.
+func (w *conformityWork) add(o *Conformity, i, own int, confidence float64) {
+	w.bins = append(w.bins[:0], cellChance{0, 1})
+	for _, d := range w.dims {
+		cells := d.at(i)
+		if len(cells) == 1 { // certain of this dimension, as a rule
+			for k := range w.bins {
+				w.bins[k].code += cells[0].code
+				w.bins[k].p *= cells[0].p
 			}
 			continue
 		}
-		if v > high+farU*a.u || v < low-farU*a.u {
-			continue
+		w.next = w.next[:0]
+		for _, b := range w.bins {
+			for _, c := range cells {
+				w.next = append(w.next, cellChance{b.code + c.code, b.p * c.p})
+			}
 		}
-		if v >= low+farU*a.u && v <= high-farU*a.u {
-			*cells = append(*cells, cellChance{i * a.stride, 1})
-			return true
-		}
-		below = false
-		if p := phi((high-v)/a.u) - phi((low-v)/a.u); p > negligible {
-			*cells = append(*cells, cellChance{i * a.stride, p})
+		w.bins, w.next = w.next, w.bins
+	}
+	conforms := 0.0
+	for _, b := range w.bins {
+		if b.code == own {
+			conforms = b.p
+		} else {
+			o.WronglyRejected[b.code] += b.p
 		}
 	}
-	return a.u == 0 || below && len(*cells) == 0
+	if own < len(o.Confident) {
+		o.WronglyAccepted[own] += 1 - conforms
+		if conforms >= confidence {
+			o.Confident[own]++
+		}
+	}
 }
 
 // phi is the standard normal distribution function Φ.
@@ -213,10 +171,10 @@ func (s *Spec) chances(u map[string]float64) []chance {
 	var list []chance
 	for i := range s.regionPlans {
 		rp := &s.regionPlans[i]
-		list = append(list, chance{plane: newRegionChance(rp, stated(rp.Quantities[0]), stated(rp.Quantities[1]))})
+		list = append(list, newRegionChance(rp, stated(rp.Quantities[0]), stated(rp.Quantities[1])))
 	}
 	for i, a := range s.axes {
-		list = append(list, chance{axis: &axisChance{column: s.axisColumns[i], edges: a.Edges, stride: int(s.axisStrides[i]), u: stated(a.Quantity)}})
+		list = append(list, &axisChance{column: s.axisColumns[i], edges: a.Edges, stride: int(s.axisStrides[i]), u: stated(a.Quantity)})
 	}
 	return list
 }

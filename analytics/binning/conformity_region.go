@@ -1,6 +1,10 @@
 package binning
 
-import "math"
+import (
+	"math"
+
+	"epitally/analytics/wafermap"
+)
 
 // regionChance works out in which cells of a region a die may truly be.
 type regionChance struct {
@@ -9,6 +13,9 @@ type regionChance struct {
 	exact  bool   // no uncertainty is stated
 	whole  box    // of all cells and their surroundings
 	lists  [chanceSide * chanceSide][]int
+
+	x, y  *wafermap.Plane
+	cells []cellChance // of the die at hand
 }
 
 // chanceSide is how many squares a side has of the grid that lists, per square,
@@ -46,54 +53,52 @@ func (r *regionChance) square(p point) (x, y int) {
 	return int((p.x - r.whole.low.x) / (r.whole.high.x - r.whole.low.x) * chanceSide), int((p.y - r.whole.low.y) / (r.whole.high.y - r.whole.low.y) * chanceSide)
 }
 
-// at is chance.at for a region.
-func (r *regionChance) at(cells *[]cellChance, p point) (certain bool) {
-	if r.convert {
-		d := -2*p.x + 12*p.y + 3
-		p = point{4 * p.x / d, 9 * p.y / d}
-	}
+func (r *regionChance) take(planes []*wafermap.Plane) {
+	r.x, r.y = planes[r.columns[0]], planes[r.columns[1]]
+}
+
+func (r *regionChance) at(i int) []cellChance {
+	r.cells = r.cells[:0]
+	p := r.place(r.x.Value(i), r.y.Value(i))
 	if r.exact {
 		if c := r.region.classify(p, r.order); c >= 0 {
-			*cells = append(*cells, cellChance{c * int(r.step), 1})
+			r.cells = append(r.cells, cellChance{c * int(r.step), 1})
 		}
-		return true
+		return r.cells
 	}
 	if !r.whole.has(p) {
-		return true
+		return r.cells
 	}
 	x, y := r.square(p)
 	m := r.region.whitening(p)
-	left, certain := 1.0, true
+	left := 1.0
 	for _, i := range r.lists[min(y, chanceSide-1)*chanceSide+min(x, chanceSide-1)] {
-		share, sure := r.Cells[i].share(m, p)
-		certain = certain && sure
 		// Of overlapping cells the earlier has what both could claim.
-		if share = min(share, left); share > negligible {
-			*cells = append(*cells, cellChance{i * int(r.step), share})
+		share := min(left, r.Cells[i].share(m, p))
+		if share > negligible {
+			r.cells = append(r.cells, cellChance{i * int(r.step), share})
 			left -= share
 		}
 		if left <= negligible {
 			break
 		}
 	}
-	return certain
+	return r.cells
 }
 
 // share is the probability that the true value of a die read at p lies in the
-// cell, and whether p is so far from every outline that it is 0 or 1.
-func (c *RegionCell) share(m metric, p point) (share float64, sure bool) {
-	sure = true
+// cell.
+func (c *RegionCell) share(m metric, p point) (share float64) {
 	for j := range c.Shapes {
-		s := &c.Shapes[j]
+		rough := c.Shapes[j].rough
 		switch {
-		case m.near(s.rings, p, farU):
-			sure = false
-			share = max(share, m.integral(s.rings, p))
-		case contains(s.rings, p):
-			return 1, true
+		case m.near(rough, p, farU):
+			share = max(share, m.integral(rough, p))
+		case contains(rough, p):
+			return 1
 		}
 	}
-	return share, sure
+	return share
 }
 
 // integral is the probability that a point normal about p, with the covariance
@@ -147,11 +152,11 @@ func owenT(h, a float64) float64 {
 		a, sign = -a, -1
 	}
 	switch {
-	case h > farU:
+	case h > owenFar:
 		return 0
 	case h < 1e-8:
 		return sign * math.Atan(a) / (2 * math.Pi)
-	case h*a > farU:
+	case h*a > owenFar:
 		return sign * phi(-h) / 2
 	}
 	sum := 0.0
@@ -166,6 +171,9 @@ func owenT(h, a float64) float64 {
 	}
 	return sign * sum / (2 * math.Pi)
 }
+
+// owenFar is where Φ is under 2e-8.
+const owenFar = 5.5
 
 func owenIntegrand(h, t float64) float64 {
 	q := 1 + t*t

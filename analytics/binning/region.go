@@ -53,6 +53,7 @@ type Shape struct {
 	NominalK int        // of a quadrangle
 
 	rings  []ring
+	rough  []ring    // the same with fewer points, for integrals
 	centre colour.UV // of a circle
 }
 
@@ -67,6 +68,28 @@ func (s *Shape) holds(p point, space Space) bool {
 		q = colour.XY{X: p.x, Y: p.y}.UV()
 	}
 	return math.Hypot(q.U-s.centre.U, q.V-s.centre.V) <= colour.StepRadius*s.Steps*(1+1e-12)
+}
+
+// roughOf draws a circle with a tenth of its points, set out so far that the area
+// stays that of the circle: nowhere off by more than 0.4 % of the radius.
+func roughOf(s *Shape) []ring {
+	if s.Kind != "circle" {
+		return s.rings
+	}
+	full := s.rings[0]
+	var middle point
+	for _, p := range full {
+		middle.x, middle.y = middle.x+p.x/float64(len(full)), middle.y+p.y/float64(len(full))
+	}
+	var r ring
+	for i := 0; i < len(full); i += 10 {
+		r = append(r, full[i])
+	}
+	grow := math.Sqrt(full.area() / r.area())
+	for i, p := range r {
+		r[i] = point{middle.x + grow*(p.x-middle.x), middle.y + grow*(p.y-middle.y)}
+	}
+	return []ring{r}
 }
 
 func (c *RegionCell) holds(p point, space Space) bool {
@@ -87,12 +110,22 @@ func (r *Region) finish() {
 		c := &r.Cells[i]
 		c.box = emptyBox()
 		for j := range c.Shapes {
+			c.Shapes[j].rough = roughOf(&c.Shapes[j])
 			c.box = c.box.join(boxOf(c.Shapes[j].rings).grown(1e-9, 1e-9))
 		}
 		r.order = append(r.order, i)
 	}
 	slices.SortStableFunc(r.order, func(a, b int) int { return r.Cells[b].Priority - r.Cells[a].Priority })
 	r.raster = newRaster(r)
+}
+
+// place is where a die's two readings lie in the region's plane.
+func (r *Region) place(x, y float64) point {
+	if r.convert {
+		q := colour.XY{X: x, Y: y}.UV()
+		return point{q.U, q.V}
+	}
+	return point{x, y}
 }
 
 // Outcomes of classify besides the number of a cell.

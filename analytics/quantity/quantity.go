@@ -55,6 +55,8 @@ var builtin = []Quantity{
 	{Name: "luminous_intensity_mcd", Label: "Luminous intensity", Unit: "mcd", Resolution: 0.1, Low: 0, High: 1e7},
 	{Name: "cie_x", Label: "CIE x", Unit: "", Resolution: 0.0001, Low: 0, High: 0.75},
 	{Name: "cie_y", Label: "CIE y", Unit: "", Resolution: 0.0001, Low: 0, High: 0.85},
+	{Name: "cie_u_prime", Label: "CIE u′", Unit: "", Resolution: 0.0001, Low: 0, High: 0.65},
+	{Name: "cie_v_prime", Label: "CIE v′", Unit: "", Resolution: 0.0001, Low: 0, High: 0.6},
 	{Name: "excitation_purity", Label: "Excitation purity", Unit: "", Resolution: 0.001, Low: 0, High: 1},
 	{Name: "cct_k", Label: "Correlated colour temperature", Unit: "K", Resolution: 1, Low: 1000, High: 20000},
 	{Name: "wall_plug_efficiency", Label: "Wall-plug efficiency", Unit: "", Resolution: 0.001, Low: 0, High: 1},

@@ -66,6 +66,7 @@ type Fab struct {
 	carriers map[string]*carrier
 	stations map[string]station
 	dice     map[string]*dice
+	hues     map[string]*hue // of recipes whose prober reads x and y
 	truth    []WaferTruth
 }
 
@@ -76,7 +77,12 @@ func New(c Config) *Fab {
 		c.End = DefaultEnd()
 	}
 	f := &Fab{Products: products(), Recipes: recipes(), config: c, plans: reactorPlans(),
-		stations: growStations(c.Seed), dice: map[string]*dice{}, truth: make([]WaferTruth, c.Wafers)}
+		stations: growStations(c.Seed), dice: map[string]*dice{}, hues: map[string]*hue{}, truth: make([]WaferTruth, c.Wafers)}
+	for i := range f.Recipes {
+		if r := &f.Recipes[i]; r.optics.colorimeter {
+			f.hues[r.Name] = newHue(r)
+		}
+	}
 	f.growCarriers()
 	loads := f.planLoads()
 	f.growRuns(loads)

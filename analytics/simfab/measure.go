@@ -33,6 +33,7 @@ type grown struct {
 	electric, luminous *field
 	badlySeated        bool
 	shiftXMM, shiftYMM float64
+	hue                *hue // nil: the prober reads no x and y
 }
 
 // Measure gives what the mapper and the prober read on wafer i, and records the
@@ -49,6 +50,10 @@ func (f *Fab) Measure(i int) (pl, probe *Reading) {
 	pl.Columns = columns(len(g.d.x), "peak_wavelength_nm", 2, "fwhm_nm", 2, "pl_intensity", 1)
 	probe.Columns = columns(len(g.d.x), "forward_voltage_v", 3, "low_current_forward_voltage_v", 3, "reverse_current_ua", 3,
 		g.o.lightUnit, g.o.lightPrecision, "dominant_wavelength_nm", 2)
+	if g.o.colorimeter {
+		probe.Columns = append(probe.Columns, columns(len(g.d.x), "cie_x", 4, "cie_y", 4)...)
+		g.hue = f.hues[w.Recipe.Name]
+	}
 	pl.X, pl.Y = g.d.x, g.d.y
 	n := float64(len(g.d.x))
 	for _, row := range g.d.rows {
@@ -158,9 +163,11 @@ func (g *grown) readProbe(m *Reading, k int, emission, dominant float64, s stati
 	switch fate {
 	case open:
 		m.putAll(limitV, limitV, 0, math.NaN(), math.NaN())
+		g.readHue(m, math.NaN())
 		return fate
 	case short:
 		m.putAll(0.05+1.4*r.Float64()*r.Float64(), 0.002+0.05*r.Float64(), limitUA, math.NaN(), math.NaN())
+		g.readHue(m, math.NaN())
 		return fate
 	}
 	leak := -2.75 + 0.22*r.NormFloat64() // log10 of µA
@@ -177,8 +184,28 @@ func (g *grown) readProbe(m *Reading, k int, emission, dominant float64, s stati
 	light := g.light * (1 + g.o.lightSlope*(dominant-g.w.Recipe.DominantNM) + 0.04*g.luminous.at(x) -
 		0.02*(g.d.rho2[k]-0.5) - 0.2*g.d.rim[k]) * (1 + s.lightRatio) * (1 + 0.008*r.NormFloat64())
 	m.putAll(voltage, low, reverse, light, dominant+s.wavelengthNM+0.08*r.NormFloat64())
+	g.readHue(m, dominant+s.wavelengthNM)
 	return fate
 }
+
+// readHue adds x and y of a die of that dominant wavelength, where the prober
+// reads them; NaN = the die does not light.
+func (g *grown) readHue(m *Reading, dominantNM float64) {
+	if g.hue == nil {
+		return
+	}
+	x, y := math.NaN(), math.NaN()
+	if dominantNM == dominantNM {
+		x, y = g.hue.at(dominantNM)
+		x, y = x+hueNoise*g.r.NormFloat64(), y+hueNoise*g.r.NormFloat64()
+	}
+	m.put(5, x)
+	m.put(6, y)
+}
+
+// hueNoise is the standard deviation of one reading of x and of y (common
+// practice: a few units of the fourth decimal).
+const hueNoise = 0.0006
 
 func (m *Reading) putAll(values ...float64) {
 	for c, v := range values {
@@ -196,4 +223,4 @@ func (m *Reading) put(c int, v float64) {
 	col.K = append(col.K, k)
 }
 
-var scales = [...]float64{1, 10, 100, 1000}
+var scales = [...]float64{1, 10, 100, 1000, 10_000}

@@ -47,6 +47,7 @@ type optics struct {
 	lightUnit      string  // quantity of the light output
 	lightSlope     float64 // relative change of light output per nm of dominant wavelength
 	lightPrecision int     // decimals the station writes
+	colorimeter    bool    // the prober reads x and y too
 }
 
 // dominantOffset is dominant − peak wavelength at an emission peak, nm.
@@ -113,7 +114,7 @@ func recipes() []Recipe {
 			nmPerDegC: 2, bowDegC: -6.3, tiltDegC: 1, edgeDegC: 3.5, coarse: 0.6, fine: 0.2, waferDegC: 0.45, runNM: 0.6,
 			emissionNM: -5, emissionSD: 0.9, offsetAt: 519, offsetNM: 5.6, offsetSlope: 0.05, offsetSD: 0.25,
 			fwhmNM: 33, fwhmSlope: 0.15, voltage: 3.24, lowVoltage: 2.12, voltageSlope: -0.0038,
-			lightUnit: "luminous_flux_lm", lightSlope: 0.003, lightPrecision: 3}},
+			lightUnit: "luminous_flux_lm", lightSlope: 0.003, lightPrecision: 3, colorimeter: true}},
 		{Name: "red-625", PLPeakNM: 636.4, PLWindowNM: 2.5, DominantNM: 625, DominantWindowNM: 2, optics: optics{
 			nmPerDegC: 0.6, bowDegC: 5, tiltDegC: 1.2, edgeDegC: 3, coarse: 0.6, fine: 0.25, waferDegC: 0.8, runNM: 0.3,
 			emissionNM: 1, emissionSD: 0.5, offsetAt: 629, offsetNM: -10, offsetSlope: -0.286, offsetSD: 0.3,

@@ -38,9 +38,20 @@ func catalogue(f *simfab.Fab) []byte {
 		b = fmt.Appendf(b, "  - recipe: %s\n    targets:\n", r.Name)
 		b = fmt.Appendf(b, "      - {quantity: peak_wavelength_nm, value: %g, window: %g}\n", r.PLPeakNM, r.PLWindowNM)
 		b = fmt.Appendf(b, "      - {quantity: dominant_wavelength_nm, value: %g, window: %g}\n", r.DominantNM, r.DominantWindowNM)
+		if r.Name == "blue-455" {
+			b = append(b, "    colour: {reference_nm: 452.4, offset_nm: 2.57, slope: -0.15, residual_nm: 0.6, fitted_to: 40 wafers mapped and probed}\n"...)
+		}
 	}
-	return b
+	return append(b, stationUncertainties...)
 }
+
+// stationUncertainties are what the stations say of one reading (common practice).
+const stationUncertainties = `stations:
+  - station: prober-1
+    uncertainty: {dominant_wavelength_nm: 0.12, forward_voltage_v: 0.004, radiant_flux_mw: 4}
+  - station: prober-2
+    uncertainty: {dominant_wavelength_nm: 0.12, forward_voltage_v: 0.004}
+`
 
 // otherProfile is the reading profile for the files of the other station.
 const otherProfile = `profile: prober-3

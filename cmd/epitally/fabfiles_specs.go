@@ -9,6 +9,7 @@ func fabSpecifications() map[string]string {
 		"fjord-blue":   fjordBlue,
 		"slate-blue":   slateBlue,
 		"meadow-green": meadowGreen,
+		"reed-green":   reedGreen,
 		"ember-red":    emberRed,
 	}
 }
@@ -137,4 +138,38 @@ products: [rowan-105]
 bins:
   name: "{W}-{L}"
   sellable: all
+`
+
+// reedGreen is a customer who buys by chromaticity, with a guard band of 1.645
+// standard uncertainties: 95 % confidence on one side (JCGM 106:2012, 8.3.2).
+const reedGreen = `specification: reed-green
+title: Reed green, by chromaticity, 200 mA
+kind: probe
+products: [moss-76]
+uncertainty:
+  cie_x: 0.0006
+  cie_y: 0.0006
+  luminous_flux_lm: 0.4
+` + electricalRejects + `regions:
+  - region: G
+    outside: off-colour
+    guard: 1.645 u
+    guard_reason: too near a border
+    cells:
+      - {name: core, priority: 1, circle: {centre: [0.1729, 0.6944], steps: 2}}
+      - {name: G1, polygon: [[0.1460, 0.6842], [0.1604, 0.6572], [0.1695, 0.6697], [0.1559, 0.6977]]}
+      - {name: G2, polygon: [[0.1559, 0.6977], [0.1695, 0.6697], [0.1793, 0.6800], [0.1665, 0.7088]]}
+      - {name: G3, polygon: [[0.1665, 0.7088], [0.1793, 0.6800], [0.1905, 0.6869], [0.1785, 0.7163]]}
+      - {name: G4, polygon: [[0.1785, 0.7163], [0.1905, 0.6869], [0.2026, 0.6915], [0.1918, 0.7213]]}
+axes:
+  - axis: F
+    quantity: luminous_flux_lm
+    ratios: {from: 34, ratio: 1.14, count: 4, places: 1}
+    below: dim
+    above: bright
+bins:
+  name: "{G}-{F}"
+  sellable: ["core-*", "G1-*", "G2-*", "G3-*"]
+  prices: {"core-*": 0.058, "G?-F3": 0.049, "*": 0.044}
+  currency: EUR
 `

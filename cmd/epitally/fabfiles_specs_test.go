@@ -17,7 +17,8 @@ func TestFabSpecificationsGiveYieldsLikeAFabs(t *testing.T) {
 	// good wafers of a running fab lie between 60 and 95 %; fjord-blue takes
 	// only wafers that a walking reactor has moved to long wavelengths.
 	want := map[string][2]float64{"harbour-blue": {0.6, 0.95}, "fjord-blue": {0.05, 0.6}, "slate-blue": {0.6, 0.95},
-		"meadow-green": {0.6, 0.95}, "ember-red": {0.6, 0.95}}
+		"meadow-green": {0.6, 0.95}, "reed-green": {0.4, 0.8}, // a narrow one, with a guard band
+		"ember-red": {0.6, 0.95}}
 	specs := map[string]*binning.Spec{}
 	yields := map[string][]float64{}
 	reasons := map[string]int{}

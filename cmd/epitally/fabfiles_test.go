@@ -22,7 +22,7 @@ import (
 
 // goldenFab is the digest of all files of the fab of seed 1 with 24 wafers. It
 // changes only when the demo fab is meant to change.
-const goldenFab = "8ca71cd2ea317380"
+const goldenFab = "4e336efcae76b74d"
 
 func TestFabFilesAreTheSameEveryTime(t *testing.T) {
 	t.Parallel()

@@ -3,6 +3,7 @@ import { isDark, switchGround, watchSystem } from './ground.js';
 import { startMap } from './map.js';
 import { startChooser } from './chooser.js';
 import { drawSwatches } from './swatch.js';
+import { startEditor } from './editor.js';
 
 function startGround() {
   const button = document.getElementById('ground');
@@ -30,6 +31,7 @@ setSmallMaps();
 drawSwatches();
 const map = startMap();
 startChooser(map);
+startEditor();
 document.addEventListener('ground', () => {
   setSmallMaps();
   drawSwatches();
