@@ -4,6 +4,7 @@ import (
 	"encoding/json"
 	"net/http"
 	"reflect"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -56,11 +57,14 @@ func operation(r route, schemas *schemas) object {
 		op["parameters"] = params
 	}
 	if r.body != nil {
-		content := object{}
-		for _, media := range r.body {
-			content[media] = object{"schema": object{"type": "string"}}
+		content, schema, description := object{}, object{"type": "string"}, "a specification document"
+		if r.takes != nil {
+			schema, description = schemas.of(reflect.TypeOf(r.takes)), "what to work out"
 		}
-		op["requestBody"] = object{"required": true, "description": "a specification document", "content": content}
+		for _, media := range r.body {
+			content[media] = object{"schema": schema}
+		}
+		op["requestBody"] = object{"required": true, "description": description, "content": content}
 	}
 	return op
 }
@@ -96,7 +100,8 @@ func responses(r route, schemas *schemas) object {
 // problems are the statuses of refusals that the route may answer with.
 func (r *route) problems() []int {
 	out := []int{http.StatusBadRequest, http.StatusInternalServerError, http.StatusServiceUnavailable}
-	if strings.Contains(r.path, "{") || strings.HasSuffix(r.path, ".png") {
+	names := func(p parameter) bool { return p.name == "measurements" }
+	if slices.ContainsFunc(r.params, names) || strings.Contains(r.path, "{") || strings.HasSuffix(r.path, ".png") {
 		out = append(out, http.StatusNotFound)
 	}
 	if r.body != nil {

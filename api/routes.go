@@ -6,6 +6,8 @@ import (
 	"strings"
 
 	"github.com/labstack/echo/v4"
+
+	"epitally/analytics/colour"
 )
 
 // route is one address of the API: what the router and the OpenAPI document are
@@ -17,6 +19,7 @@ type route struct {
 	summary string
 	params  []parameter
 	body    []string // media types of the request body; nil = none
+	takes   any      // a value of a JSON body's type; nil = a specification document
 	handle  echo.HandlerFunc
 	answers []answer // of success
 	tagged  bool     // has an ETag: 304 is possible
@@ -50,6 +53,12 @@ func get[P any](path, id, summary string, h func(echo.Context, P) error, answers
 func post[P any](path, id, summary string, h func(echo.Context, P) error, answers ...answer) route {
 	r := get(path, id, summary, h, answers...)
 	r.method, r.body = http.MethodPost, documentMedia
+	return r
+}
+
+// takesJSON makes a route take JSON of the sample's type.
+func takesJSON(r route, sample any) route {
+	r.body, r.takes = []string{mediaJSON}, sample
 	return r
 }
 
@@ -97,6 +106,8 @@ func (s *Server) routes() []route {
 			asJSON(specDetailOut{}), asMedia(mediaYAML))),
 
 		post(root+"/specifications/trial", "trySpecification", "Try the specification in the body, which is not stored, on many wafers, and check it", s.trySpec, asJSON(trialOut{})),
+
+		takesJSON(post(root+"/calc/colour", "calcColour", "Colour and efficiency of a spectrum, a chromaticity, or a peak and width", s.calcColour, asJSON(colour.Answer{})), colourIn{}),
 
 		get(root+"/quantities", "listQuantities", "Quantities, built in and declared", s.listQuantities, asJSON(quantitiesOut{}), csv),
 		get(root+"/products", "listProducts", "Products with their layouts", s.listProducts, asJSON(productsOut{}), csv),

@@ -1,6 +1,7 @@
 package api
 
 import (
+	"encoding/json"
 	"fmt"
 	"reflect"
 	"strings"
@@ -27,6 +28,8 @@ func (s *schemas) of(t reflect.Type) object {
 	switch {
 	case t == reflect.TypeFor[time.Time]():
 		return object{"type": "string", "format": "date-time"}
+	case t == reflect.TypeFor[json.RawMessage]():
+		return object{} // anything
 	case t == reflect.TypeFor[anything]():
 		return object{"type": "object"}
 	}

@@ -36,6 +36,7 @@ func commands() []command {
 		{"serve", "serve pages and API, and load what lands in the drop folder", serve},
 		{"load", "load files or folders by hand, or show what they would give (--dry-run)", load},
 		{"demo", "grow an invented fab, load it through the drop folder and serve it", demo},
+		{"calc colour", "colour and efficiency of a spectrum, a chromaticity, or a peak and width", calcColour},
 		{"calc summary", "summarise one column of a CSV file", calcSummary},
 		{"gallery", "write every page from canned data as files, without a database", gallery},
 		{"health", "ask a running server whether it is ready", health},
