@@ -4,7 +4,6 @@ import (
 	"context"
 	"fmt"
 	"net/http"
-	"slices"
 	"strings"
 	"sync"
 
@@ -68,7 +67,7 @@ func (s *Server) bin(ctx context.Context, m *db.Measurement, stored *db.Spec) (*
 
 // binUnder bins under a parsed specification; version 0 = one that is not stored.
 func (s *Server) binUnder(ctx context.Context, m *db.Measurement, spec *binning.Spec, version int) (*binned, error) {
-	have, lacking := parts(m, spec)
+	have, lacking := m.Split(spec)
 	var planes []wafermap.Plane
 	var err error
 	if len(have) > 0 { // none named would mean all
@@ -82,44 +81,13 @@ func (s *Server) binUnder(ctx context.Context, m *db.Measurement, spec *binning.
 	}
 	b := &binned{spec: spec, cells: spec.Cells(), codes: make([]uint16, grid.Len())}
 	b.counts = make([]int, len(b.cells))
-	if err := spec.Bin(b.codes, b.counts, binning.PickPlanes(spec, planes), counted(grid, m.Layout)); err != nil {
+	if err := spec.Bin(b.codes, b.counts, binning.PickPlanes(spec, planes), m.Layout.Counted(grid)); err != nil {
 		return nil, err
 	}
 	b.tally = db.NewTallyOf(spec.Name, version, b.cells, b.counts, m.Layout)
 	b.tally.MeasurementID = m.ID
 	b.notices = notices(m, spec, lacking, &b.tally)
 	return b, nil
-}
-
-// parts splits what a specification needs into what the measurement has and what
-// it lacks.
-func parts(m *db.Measurement, spec *binning.Spec) (have, lacking []string) {
-	for _, name := range spec.Quantities() {
-		if slices.ContainsFunc(m.Quantities, named(name)) {
-			have = append(have, name)
-		} else {
-			lacking = append(lacking, name)
-		}
-	}
-	return have, lacking
-}
-
-// counted says which dies count for a tally, nil for all: those inside the edge
-// exclusion, unless the layout is only assumed.
-func counted(g *wafermap.Grid, l *wafermap.Layout) []bool {
-	if l == nil || l.Assumed || l.Validate() != nil {
-		return nil
-	}
-	include := make([]bool, g.Len())
-	var first, last int
-	for i := range include {
-		if i == 0 || g.Y[i] != g.Y[i-1] {
-			first, last = l.Span(int(g.Y[i]))
-		}
-		x := int(g.X[i])
-		include[i] = first <= x && x <= last
-	}
-	return include
 }
 
 func notices(m *db.Measurement, spec *binning.Spec, lacking []string, t *db.Tally) []string {

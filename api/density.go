@@ -76,11 +76,9 @@ func (s *Server) getDensity(c echo.Context) error {
 	if unchanged(c, tagOf(c.Request().URL.RawQuery), keepNumber) {
 		return notModified(c)
 	}
-	numbers := make([]int64, len(ids))
-	for i, id := range ids {
-		if numbers[i], err = strconv.ParseInt(id, 10, 64); err != nil {
-			return fmt.Errorf("measurements: %q is not a measurement's number: %w", id, analytics.ErrInvalid)
-		}
+	numbers, err := numbersOf(ids)
+	if err != nil {
+		return err
 	}
 	quantities := []string{d.X}
 	if d.Y != "" {

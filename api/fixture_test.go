@@ -131,7 +131,7 @@ func tallyOf(t testing.TB, spec db.Spec, m *db.NewMeasurement, l wafermap.Layout
 		t.Fatal(err)
 	}
 	counts := make([]int, len(parsed.Cells()))
-	if err := parsed.Bin(nil, counts, binning.PickPlanes(parsed, m.Planes), counted(m.Grid, &l)); err != nil {
+	if err := parsed.Bin(nil, counts, binning.PickPlanes(parsed, m.Planes), l.Counted(m.Grid)); err != nil {
 		t.Fatal(err)
 	}
 	return db.NewTallyOf(spec.Name, spec.Version, parsed.Cells(), counts, &l)

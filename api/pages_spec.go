@@ -71,7 +71,7 @@ func (s *Server) lookAtSpec(c echo.Context, page *web.BinPage, sp *db.Spec, next
 	if err != nil {
 		return err
 	}
-	t, err := s.try(ctx, spec, list, true)
+	t, err := s.store.Try(ctx, spec, list, true)
 	if err != nil {
 		return err
 	}
@@ -107,14 +107,14 @@ func (s *Server) tryEdited(c echo.Context) error {
 		return s.answerEdit(c, err)
 	}
 	ctx := c.Request().Context()
-	list := []chosen{}
+	list := []db.Chosen{}
 	if len(ids) > 0 {
 		if list, err = s.choose(ctx, spec, ids, 0); err != nil {
 			return s.answerEdit(c, err)
 		}
 	}
 	quick := queryText(c, "quick") == "yes"
-	t, err := s.try(ctx, spec, list, !quick)
+	t, err := s.store.Try(ctx, spec, list, !quick)
 	if err != nil {
 		return s.answerEdit(c, err)
 	}
@@ -170,31 +170,31 @@ func (s *Server) answerEdit(c echo.Context, err error) error {
 }
 
 // look shows a trial with findings.
-func (s *Server) look(ctx context.Context, t *trial, list []chosen, ids []string, as shownAs) (web.SpecLook, error) {
-	found, err := s.findings(ctx, t, list)
+func (s *Server) look(ctx context.Context, t *db.Trial, list []db.Chosen, ids []string, as shownAs) (web.SpecLook, error) {
+	found, overlapWafers, err := s.store.Findings(ctx, t, list)
 	if err != nil {
 		return web.SpecLook{}, err
 	}
 	out := s.quickLook(t, ids, as)
 	for _, f := range found {
 		line := web.SpecFinding{Kind: string(f.Kind), Says: f.Says, Line: f.Line}
-		if f.Kind == binning.Overlap && len(list) > 0 {
-			line.Dies = fmt.Sprintf("%s of %s", web.Plural(f.Dies, "die", "dies"), web.Plural(min(len(list), mostOverlapWafers), "wafer", "wafers"))
+		if f.Kind == binning.Overlap && overlapWafers > 0 {
+			line.Dies = fmt.Sprintf("%s of %s", web.Plural(f.Dies, "die", "dies"), web.Plural(overlapWafers, "wafer", "wafers"))
 		}
 		out.Findings = append(out.Findings, line)
 	}
 	return out, nil
 }
 
-func (s *Server) quickLook(t *trial, ids []string, as shownAs) web.SpecLook {
-	wafers := "the last " + web.Plural(t.wafers, "wafer", "wafers")
-	look := web.SpecLook{Wafers: wafers, Good: t.good(), Total: t.denominator, Verdict: web.TrialSentence(t.good(), t.denominator, as.before, wafers)}
-	numbers := web.BinNumbers{Spec: t.spec, Counts: t.counts, Denominator: t.denominator, Wafers: t.wafers}
-	if t.risk != nil {
-		numbers.Risk, numbers.RiskCounts, numbers.RiskWafers = &t.risk.Conformity, t.risk.counts, t.risk.wafers
+func (s *Server) quickLook(t *db.Trial, ids []string, as shownAs) web.SpecLook {
+	wafers := "the last " + web.Plural(t.Wafers, "wafer", "wafers")
+	look := web.SpecLook{Wafers: wafers, Good: t.Good(), Total: t.Denominator, Verdict: web.TrialSentence(t.Good(), t.Denominator, as.before, wafers)}
+	numbers := web.BinNumbers{Spec: t.Spec, Counts: t.Counts, Denominator: t.Denominator, Wafers: t.Wafers}
+	if t.Risk != nil {
+		numbers.Risk, numbers.RiskCounts, numbers.RiskWafers = &t.Risk.Conformity, t.Risk.Counts, t.Risk.Wafers
 	}
 	look.Bins = web.NewBinTable(numbers)
-	plots := web.BinPlots{Spec: t.spec, Counts: t.counts, Whole: as.whole, Boxes: as.boxes, Edit: true}
+	plots := web.BinPlots{Spec: t.Spec, Counts: t.Counts, Whole: as.whole, Boxes: as.boxes, Edit: true}
 	if len(ids) > 0 {
 		plots.Density = func(d web.DensityPlot) string { return densityURL(d, ids) }
 	}

@@ -98,3 +98,21 @@ func (l *Layout) Inside(x, y int) bool {
 func (l *Layout) OnWafer(x, y int) bool {
 	return l.RadiusMM(x, y) <= l.WaferDiameterMM/2*(1+1e-12)
 }
+
+// Counted says which dies of a grid count for a tally, nil for all: those inside
+// the edge exclusion, unless the layout is only assumed (or nil, or not valid).
+func (l *Layout) Counted(g *Grid) []bool {
+	if l == nil || l.Assumed || l.Validate() != nil {
+		return nil
+	}
+	include := make([]bool, g.Len())
+	var first, last int
+	for i := range include {
+		if i == 0 || g.Y[i] != g.Y[i-1] {
+			first, last = l.Span(int(g.Y[i]))
+		}
+		x := int(g.X[i])
+		include[i] = first <= x && x <= last
+	}
+	return include
+}

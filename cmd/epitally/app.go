@@ -116,6 +116,19 @@ func openStore(ctx context.Context, c Config, log *slog.Logger) (*localpg.Cluste
 	return cluster, store, nil
 }
 
+// joinStore is openStore that uses the database of a server that runs on the data
+// folder, when one does.
+func joinStore(ctx context.Context, c Config, log *slog.Logger) (*localpg.Cluster, *db.Store, error) {
+	cluster, store, err := openStore(ctx, c, log)
+	if errors.Is(err, localpg.ErrInUse) {
+		if url, ok := localpg.Attach(filepath.Join(c.Data, "postgres")); ok {
+			c.DatabaseURL = secret(url)
+			return openStore(ctx, c, log)
+		}
+	}
+	return cluster, store, err
+}
+
 // URL is where the pages are.
 func (a *App) URL() string { return "http://" + a.listener.Addr().String() }
 

@@ -16,7 +16,6 @@ import (
 
 	"epitally/analytics"
 	"epitally/db"
-	"epitally/db/localpg"
 	"epitally/jobs"
 	"epitally/jobs/reader"
 )
@@ -117,13 +116,7 @@ func filesUnder(paths []string) ([]string, error) {
 // a scan does. Files stay where they are.
 func loadFiles(ctx context.Context, c *console, config Config, zone *time.Location, files []string, profiles []reader.Profile) error {
 	log := newLogger(c.err, config.LogLevel)
-	cluster, store, err := openStore(ctx, config, log)
-	if errors.Is(err, localpg.ErrInUse) { // a server runs on this folder: load into its database
-		if url, ok := localpg.Attach(filepath.Join(config.Data, "postgres")); ok {
-			config.DatabaseURL = secret(url)
-			cluster, store, err = openStore(ctx, config, log)
-		}
-	}
+	cluster, store, err := joinStore(ctx, config, log)
 	if err != nil {
 		return err
 	}

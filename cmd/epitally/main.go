@@ -36,6 +36,8 @@ func commands() []command {
 		{"serve", "serve pages and API, and load what lands in the drop folder", serve},
 		{"load", "load files or folders by hand, or show what they would give (--dry-run)", load},
 		{"demo", "grow an invented fab, load it through the drop folder and serve it", demo},
+		{"spec check", "look for overlaps, gaps and other slips in a specification", specCheck},
+		{"spec compare", "tell which dies change bins between two specifications, and what that is worth", specCompare},
 		{"calc colour", "colour and efficiency of a spectrum, a chromaticity, or a peak and width", calcColour},
 		{"calc summary", "summarise one column of a CSV file", calcSummary},
 		{"gallery", "write every page from canned data as files, without a database", gallery},
