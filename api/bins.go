@@ -53,6 +53,9 @@ type binned struct {
 	codes   []uint16 // per die of the grid, index into cells
 	tally   db.Tally
 	notices []string
+	// confident is the sellable dies that conform with 95 % confidence; −1 when no
+	// uncertainty is known.
+	confident int
 }
 
 // bin bins the dies of a measurement now, from its planes, under a stored
@@ -86,6 +89,9 @@ func (s *Server) binUnder(ctx context.Context, m *db.Measurement, spec *binning.
 	}
 	b.tally = db.NewTallyOf(spec.Name, version, b.cells, b.counts, m.Layout)
 	b.tally.MeasurementID = m.ID
+	if err := s.addRisks(ctx, b, m, planes, grid); err != nil {
+		return nil, err
+	}
 	b.notices = notices(m, spec, lacking, &b.tally)
 	return b, nil
 }
@@ -102,6 +108,28 @@ func notices(m *db.Measurement, spec *binning.Spec, lacking []string, t *db.Tall
 		out = append(out, fmt.Sprintf("No layout is known for this wafer, so the yield is over its %d measured dies.", t.Denominator))
 	}
 	return out
+}
+
+// addRisks works out what the uncertainty of the specification or the station does
+// to the bins.
+func (s *Server) addRisks(ctx context.Context, b *binned, m *db.Measurement, planes []wafermap.Plane, g *wafermap.Grid) error {
+	b.confident = -1
+	u, err := s.store.StationUncertainty(ctx, m.Station)
+	if err != nil || !b.spec.Uncertain(u) {
+		return err
+	}
+	c, err := b.spec.Conformity(b.codes, binning.PickPlanes(b.spec, planes), m.Layout.Counted(g), u, binning.Confidence)
+	if err != nil {
+		return err
+	}
+	b.tally.AddRisks(c)
+	b.confident = 0
+	for i, n := range c.Confident {
+		if b.cells[i].Class == binning.Sellable {
+			b.confident += n
+		}
+	}
+	return nil
 }
 
 type binParams struct {

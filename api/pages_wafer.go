@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"math"
 	"slices"
 	"strconv"
 	"strings"
@@ -11,6 +12,7 @@ import (
 	"github.com/labstack/echo/v4"
 
 	"epitally/analytics"
+	"epitally/analytics/colour"
 	"epitally/analytics/quantity"
 	"epitally/analytics/wafermap"
 	"epitally/db"
@@ -64,10 +66,57 @@ func (s *Server) waferInput(c echo.Context) (*web.WaferInput, *db.Measurement, e
 	if err != nil {
 		return nil, nil, err
 	}
+	if err := s.suspectChange(ctx, &shown, m, all, summaries); err != nil {
+		return nil, nil, err
+	}
 	for _, sum := range summaries {
 		in.Planes = append(in.Planes, plotted(sum, w.Targets, m.Layout))
 	}
 	return in, m, nil
+}
+
+// suspectChange looks at the measurement of the same kind before: flux that
+// changed alone is the tester's doing.
+func (s *Server) suspectChange(ctx context.Context, shown *web.MeasurementInput, m *db.Measurement, all []db.Measurement, summaries []db.Summary) error {
+	at := slices.IndexFunc(all, func(o db.Measurement) bool { return o.ID == m.ID })
+	for i := at + 1; i < len(all); i++ { // newest first
+		if all[i].Kind != m.Kind {
+			continue
+		}
+		before, err := s.store.Summaries(ctx, all[i].ID)
+		if err != nil {
+			return err
+		}
+		found := colour.CompareMeasurements(medians(&all[i], before), medians(m, summaries))
+		for k := range found {
+			found[k].Dies, found[k].Of = m.Dies, m.Dies
+		}
+		shown.Suspects = append(slices.Clone(shown.Suspects), found...)
+		return nil
+	}
+	return nil
+}
+
+// medians are a measurement's medians as if it had one die.
+func medians(m *db.Measurement, summaries []db.Summary) colour.DieReadings {
+	of := func(name string) []float64 {
+		for _, s := range summaries {
+			if s.Quantity.Name == name && m.DerivedFrom[name] == "" {
+				return []float64{s.Summary.Median}
+			}
+		}
+		return nil
+	}
+	r := colour.DieReadings{RadiantFluxMW: of("radiant_flux_mw"), ForwardVoltageV: of("forward_voltage_v"), CurrentMA: math.NaN()}
+	for _, name := range []string{"dominant_wavelength_nm", "peak_wavelength_nm"} {
+		if r.WavelengthNM == nil {
+			r.WavelengthNM = of(name)
+		}
+	}
+	if m.DriveCurrentMA != nil {
+		r.CurrentMA = *m.DriveCurrentMA
+	}
+	return r
 }
 
 // chooseMeasurement is the one asked for, else the newest current one, else the
@@ -95,7 +144,8 @@ func chooseMeasurement(c echo.Context, wafer string, all []db.Measurement) (*db.
 
 func measurementInput(m *db.Measurement) web.MeasurementInput {
 	return web.MeasurementInput{ID: m.ID, Kind: m.Kind, Station: m.Station, MeasuredAt: m.MeasuredAt, DriveCurrentMA: m.DriveCurrentMA, Dies: m.Dies,
-		Remeasured: m.Remeasured, Current: m.Current, SourceID: m.SourceID, Layout: m.Layout, Facts: m.Facts, Notices: m.Notices}
+		Remeasured: m.Remeasured, Current: m.Current, SourceID: m.SourceID, Layout: m.Layout, Facts: m.Facts, Notices: m.Notices,
+		DerivedFrom: m.DerivedFrom, Suspects: m.Suspects}
 }
 
 func plotted(s db.Summary, targets []db.Target, l *wafermap.Layout) web.Plotted {
@@ -253,5 +303,5 @@ func (s *Server) specInput(ctx context.Context, m *db.Measurement, spec *db.Spec
 		return nil, err
 	}
 	return &web.SpecInput{Name: spec.Name, Version: spec.Version, Latest: spec.Latest, Cells: b.cells, Counts: b.counts, Codes: b.codes,
-		Good: b.tally.Good, Denominator: b.tally.Denominator, OverLayout: b.tally.OverLayout}, nil
+		Good: b.tally.Good, Denominator: b.tally.Denominator, OverLayout: b.tally.OverLayout, Confident: b.confident}, nil
 }

@@ -10,6 +10,7 @@ import (
 	"time"
 
 	"epitally/analytics/binning"
+	"epitally/analytics/colour"
 	"epitally/analytics/quantity"
 	"epitally/analytics/uniformity"
 	"epitally/analytics/wafermap"
@@ -51,6 +52,8 @@ type MeasurementInput struct {
 	Layout         *wafermap.Layout
 	Facts          map[string]string
 	Notices        []string
+	DerivedFrom    map[string]string // quantity → what it was computed from
+	Suspects       []colour.Suspect
 }
 
 // SpecInput is the measurement binned under one specification version.
@@ -64,6 +67,7 @@ type SpecInput struct {
 	Good        int
 	Denominator int
 	OverLayout  bool
+	Confident   int // sellable dies that conform with 95 % confidence; −1 = no uncertainty is known
 }
 
 func (s *SpecInput) title() string { return s.Name + " v" + strconv.Itoa(s.Version) }
@@ -99,16 +103,18 @@ func NewWaferPage(in WaferInput) WaferPage {
 	if in.View == "bins" && in.Spec != nil {
 		p.View = "bins"
 	}
-	main, shown := in.pick(MainQuantity(in.quantities())), in.pick(in.Shown)
+	main, shown := in.pick(MainQuantity(in.quantities(), in.Measurement.DerivedFrom)), in.pick(in.Shown)
 	if shown == nil {
 		shown = main
 	}
-	p.Notices = in.notices()
+	p.Notices, p.Suspects = in.notices(), in.Measurement.Suspects
 	p.Measured, p.Downloads = measuredFacts(in.Measurement, in.Zone), in.downloads()
 	p.Measurements, p.Specs = in.measurementOptions(), in.SpecChoices
 	for _, q := range in.Planes {
 		p.Quantities = append(p.Quantities, Option{q.Quantity.Name, axisTitle(q.Quantity), shown != nil && q.Quantity.Name == shown.Quantity.Name})
-		p.Stats = append(p.Stats, statLine(q))
+		line := statLine(q)
+		line.From = in.Measurement.DerivedFrom[q.Quantity.Name]
+		p.Stats = append(p.Stats, line)
 	}
 	p.StatsOver = "Figures are " + in.countedWords() + "."
 	p.Finding = in.sentence(main)
@@ -126,9 +132,15 @@ func NewWaferPage(in WaferInput) WaferPage {
 }
 
 // MainQuantity is the quantity a wafer is judged by first: the dominant
-// wavelength, else the peak wavelength, else the first; "" when there is none.
-func MainQuantity(names []string) string {
-	for _, want := range []string{"dominant_wavelength_nm", "peak_wavelength_nm"} {
+// wavelength that was measured, else the peak wavelength, else the dominant
+// wavelength that was computed, else the first; "" when there is none.
+func MainQuantity(names []string, derivedFrom map[string]string) string {
+	const dominant, peak = "dominant_wavelength_nm", "peak_wavelength_nm"
+	wanted := []string{dominant, peak}
+	if derivedFrom[dominant] != "" {
+		wanted = []string{peak, dominant}
+	}
+	for _, want := range wanted {
 		for _, name := range names {
 			if name == want {
 				return name
@@ -221,6 +233,9 @@ func (in *WaferInput) fillBins(p *WaferPage) {
 	p.SpecTitle, p.SpecHref = s.title(), "/bins/"+url.PathEscape(s.Name)+"?version="+strconv.Itoa(s.Version)
 	p.YieldBig = Percent(s.Good, s.Denominator)
 	p.YieldOver = fmt.Sprintf("%s of %s %s", Count(s.Good), Count(s.Denominator), over(s.OverLayout))
+	if s.Confident >= 0 && s.Denominator > 0 {
+		p.Confident = Percent(s.Confident, s.Denominator)
+	}
 	q := s.under() + "&measurement=" + strconv.FormatInt(in.Measurement.ID, 10)
 	p.BinYield = SpecChart(s, waferHref(in.Wafer)+"/charts/bins.csv?"+q)
 }

@@ -99,7 +99,7 @@ func cannedWafer() WaferInput {
 
 // cannedBins sorts the canned dies into bins of 1 nm by 0.05 V.
 func cannedBins(g *wafermap.Grid, l *wafermap.Layout) *SpecInput {
-	s := &SpecInput{Name: "harbour-blue", Version: 3, Latest: true, OverLayout: true, Denominator: l.Dies(), Codes: make([]uint16, g.Len())}
+	s := &SpecInput{Name: "harbour-blue", Version: 3, Latest: true, OverLayout: true, Confident: -1, Denominator: l.Dies(), Codes: make([]uint16, g.Len())}
 	for _, volts := range []string{"V1", "V2", "V3"} {
 		for _, colour := range []string{"B1", "B2", "B3", "B4"} {
 			s.Cells = append(s.Cells, binning.Cell{Name: colour + "-" + volts, Class: binning.Sellable})

@@ -1,6 +1,10 @@
 package web
 
-import "html/template"
+import (
+	"html/template"
+
+	"epitally/analytics/colour"
+)
 
 // WaferPage shows one measurement of one wafer.
 type WaferPage struct {
@@ -10,7 +14,8 @@ type WaferPage struct {
 	Facts        []Fact // where it grew and what it is for
 	Measured     []Fact // of the measurement shown
 	Notices      []string
-	Measurements []Option // selectors of the form; empty when there is no choice
+	Suspects     []colour.Suspect // what in the measurement breaks physics
+	Measurements []Option         // selectors of the form; empty when there is no choice
 	Quantities   []Option
 	Specs        []Option // value "name" or "name@version"
 	View         string   // "quantity" or "bins"
@@ -26,6 +31,7 @@ type WaferPage struct {
 	SpecTitle    string
 	SpecHref     string
 	YieldBig     string // "71 %"
+	Confident    string // "64 %": those that conform with 95 % confidence; "" = no uncertainty is known
 	YieldOver    string // "10,306 of 14,516 layout dies inside the edge exclusion"
 	Stats        []StatLine
 	StatsOver    string // which dies the figures are over
@@ -37,6 +43,7 @@ type WaferPage struct {
 // its quantity, one more for spreads.
 type StatLine struct {
 	Label, Unit           string
+	From                  string // what it was computed from; "" = measured
 	N, Missing            string
 	Mean, SD, RobustSD    string
 	Min, Q01, Q05, Q25    string
