@@ -87,8 +87,8 @@ func (s *Store) StaleMeasurements(ctx context.Context, limit int) (ids []int64, 
 	return pgx.CollectRows(rows, pgx.RowTo[int64])
 }
 
-// ReplaceDerived stores derived numbers anew and clears the stale mark: computed
-// planes and small maps, which depend on recipe and layout, too. Tallies of older versions
+// ReplaceDerived stores derived numbers anew and clears the stale mark. Small
+// maps, which depend on the layout, are replaced too. Tallies of older versions
 // of a specification stay.
 func (s *Store) ReplaceDerived(ctx context.Context, measurementID int64, d Derived) (err error) {
 	defer wrap(&err, "replace derived numbers of measurement %d", measurementID)
@@ -97,25 +97,11 @@ func (s *Store) ReplaceDerived(ctx context.Context, measurementID int64, d Deriv
 		if err != nil {
 			return err
 		}
-		var dies int
-		if err := tx.QueryRow(ctx, `SELECT dies FROM measurement WHERE wafer_id = $1 AND id = $2 AND measured_at = $3`,
-			at.wafer, at.id, at.measuredAt).Scan(&dies); err != nil {
-			return err
-		}
 		specs := make([]int64, len(d.Tallies))
 		for i, t := range d.Tallies {
 			specs[i] = t.SpecID
 		}
-		computed, err := newPlaneRows(d.Planes, dies)
-		if err != nil {
-			return err
-		}
 		batch := &pgx.Batch{}
-		batch.Queue(`
-			DELETE FROM plane p USING measurement m
-			WHERE m.wafer_id = $1 AND m.id = $2 AND m.measured_at = $3 AND m.derived_from ? p.quantity
-				AND p.wafer_id = $1 AND p.measurement_id = $2 AND p.measured_at = $3`, at.wafer, at.id, at.measuredAt)
-		computed.queue(batch, at)
 		for _, table := range []string{"summary", "small_map"} {
 			batch.Queue(`DELETE FROM `+table+` WHERE wafer_id = $1 AND measurement_id = $2 AND measured_at = $3`, at.wafer, at.id, at.measuredAt)
 		}

@@ -149,12 +149,11 @@ type NewMeasurement struct {
 // plane, a tally per spec version.
 type Derived struct {
 	Summaries []uniformity.Summary // one per small map, in their order
-	SmallMaps []SmallMap           // one per plane, measured ones first
+	SmallMaps []SmallMap           // one per quantity, measured ones first, then computed ones
 	Tallies   []NewTally
 	State     string // colour state word
 
-	Planes      []wafermap.Plane  // computed from the measured ones; Summaries and SmallMaps cover them, after the measured ones
-	DerivedFrom map[string]string // per computed plane: what it was computed from
+	DerivedFrom map[string]string // per computed quantity: what it was computed from
 	Suspects    []colour.Suspect
 }
 
@@ -198,7 +197,7 @@ func (l *Load) PutMeasurement(ctx context.Context, m *NewMeasurement) (id int64,
 	if err := l.store.ensureMonth(ctx, m.MeasuredAt); err != nil {
 		return 0, err
 	}
-	planes, err := newPlaneRows(slices.Concat(m.Planes, m.Derived.Planes), m.Grid.Len())
+	planes, err := newPlaneRows(m.Planes, m.Grid.Len())
 	if err != nil {
 		return 0, err
 	}

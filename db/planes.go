@@ -58,8 +58,9 @@ func (s *Store) GridRuns(ctx context.Context, hash string) (runs []wafermap.Run,
 	return wafermap.DecodeRuns(data)
 }
 
-// Planes reads the named planes of one measurement in the order asked; none
-// named = all, in display order. A missing one is analytics.ErrNotFound.
+// Planes reads the named planes of one measurement in the order asked, computing
+// those that were not measured; none named = all, in display order. A missing one
+// is analytics.ErrNotFound.
 func (s *Store) Planes(ctx context.Context, m *Measurement, quantities ...string) (planes []wafermap.Plane, err error) {
 	defer wrap(&err, "planes of measurement %d", m.ID)
 	if len(quantities) == 0 {
@@ -67,6 +68,26 @@ func (s *Store) Planes(ctx context.Context, m *Measurement, quantities ...string
 			quantities = append(quantities, q.Name)
 		}
 	}
+	found, err := s.measured(ctx, m, quantities)
+	if err != nil {
+		return nil, err
+	}
+	if err := s.addComputed(ctx, m, found, quantities); err != nil {
+		return nil, err
+	}
+	planes = make([]wafermap.Plane, len(quantities))
+	for i, q := range quantities {
+		p, ok := found[q]
+		if !ok {
+			return nil, fmt.Errorf("quantity %q is not among the measured ones: %w", q, analytics.ErrNotFound)
+		}
+		planes[i] = p
+	}
+	return planes, nil
+}
+
+// measured reads those of the named planes that are stored.
+func (s *Store) measured(ctx context.Context, m *Measurement, quantities []string) (map[string]wafermap.Plane, error) {
 	rows, err := s.pool.Query(ctx, selectPlane+` AND quantity = ANY ($4)`, m.WaferID, m.ID, m.MeasuredAt, quantities)
 	if err != nil {
 		return nil, err
@@ -81,15 +102,7 @@ func (s *Store) Planes(ctx context.Context, m *Measurement, quantities ...string
 	}); err != nil {
 		return nil, err
 	}
-	planes = make([]wafermap.Plane, len(quantities))
-	for i, q := range quantities {
-		p, ok := found[q]
-		if !ok {
-			return nil, fmt.Errorf("quantity %q is not among the measured ones: %w", q, analytics.ErrNotFound)
-		}
-		planes[i] = p
-	}
-	return planes, nil
+	return found, nil
 }
 
 const selectPlane = `
@@ -106,9 +119,18 @@ func (b *pgxBytes) ScanBytes(v []byte) error {
 	return nil
 }
 
-// StoredPlane reads one plane without decoding it, for the page.
+// StoredPlane reads one plane without decoding it, for the page; one that was not
+// measured is computed.
 func (s *Store) StoredPlane(ctx context.Context, m *Measurement, quantity string) (sp *StoredPlane, err error) {
 	defer wrap(&err, "plane %s of measurement %d", quantity, m.ID)
+	if m.DerivedFrom[quantity] != "" {
+		planes, err := s.Planes(ctx, m, quantity)
+		if err != nil {
+			return nil, err
+		}
+		made, err := EncodePlane(&planes[0])
+		return &made, err
+	}
 	sp = &StoredPlane{}
 	err = s.pool.QueryRow(ctx, `
 		SELECT encoding, base, resolution, n, data FROM plane
@@ -119,9 +141,13 @@ func (s *Store) StoredPlane(ctx context.Context, m *Measurement, quantity string
 
 // EachStoredPlanes streams the named quantities of many measurements in one
 // query, one call of fn per measurement with the planes in the order of
-// quantities (N = 0 where it has none). The planes are valid only during fn.
+// quantities (N = 0 where it has none), those that were not measured computed. The
+// planes are valid only during fn.
 func (s *Store) EachStoredPlanes(ctx context.Context, measurementIDs []int64, quantities []string, fn func(measurement int64, planes []StoredPlane) error) (err error) {
 	defer wrap(&err, "planes of %d measurements", len(measurementIDs))
+	if measurementIDs, err = s.eachComputed(ctx, measurementIDs, quantities, fn); err != nil || len(measurementIDs) == 0 {
+		return err
+	}
 	// One row a measurement with its planes as columns: a row's bytes then lie
 	// together in the connection's buffer and none has to be copied aside.
 	sql, args := eachSQL(measurementIDs, quantities)

@@ -30,11 +30,12 @@ type Config struct {
 type Store struct {
 	pool *pgxpool.Pool
 
-	mu      sync.Mutex
-	months  map[string]bool           // months whose partitions are known to exist
-	grids   map[[32]byte]int64        // committed grids by hash
-	decoded map[string]*wafermap.Grid // a few grids in memory, by hex hash
-	counted map[wafermap.Layout]int   // dies inside the edge exclusion
+	mu       sync.Mutex
+	months   map[string]bool           // months whose partitions are known to exist
+	grids    map[[32]byte]int64        // committed grids by hash
+	derivers sync.Pool                 // of *derive.Deriver
+	decoded  map[string]*wafermap.Grid // a few grids in memory, by hex hash
+	counted  map[wafermap.Layout]int   // dies inside the edge exclusion
 }
 
 // Open connects, refuses a schema that is older or newer than this binary's

@@ -9,6 +9,7 @@ import (
 	"epitally/analytics"
 	"epitally/analytics/binning"
 	"epitally/analytics/colour"
+	"epitally/analytics/derive"
 	"epitally/analytics/quantity"
 	"epitally/analytics/uniformity"
 	"epitally/analytics/wafermap"
@@ -24,8 +25,7 @@ type deriver struct {
 	codes   []uint16
 	counts  []int
 
-	dominant *colour.DominantTable // made when a measurement has x, y
-	models   colour.PeakTables
+	more derive.Deriver
 }
 
 type frameKey struct {
@@ -64,13 +64,13 @@ type dies struct {
 }
 
 func (d *deriver) derive(in dies, targets []db.Target, specs []db.Spec) (db.Derived, error) {
-	more, suspects, err := d.compute(in)
+	more, err := d.more.Compute(derive.Source{Planes: in.planes, DriveCurrentMA: in.driveCurrentMA, Model: in.colour})
 	if err != nil {
 		return db.Derived{}, err
 	}
-	in.planes, in.quantities = slices.Concat(in.planes, more.planes), slices.Concat(in.quantities, more.quantities)
+	in.planes, in.quantities = slices.Concat(in.planes, more.Planes), slices.Concat(in.quantities, more.Quantities)
 	frame := d.frame(in.grid, in.layout)
-	out := db.Derived{Planes: more.planes, DerivedFrom: more.from, Suspects: suspects}
+	out := db.Derived{DerivedFrom: more.From, Suspects: more.Suspects}
 	for i := range in.planes {
 		p, q := &in.planes[i], in.quantities[i]
 		target, window := targetOf(targets, q.Name)
@@ -78,7 +78,7 @@ func (d *deriver) derive(in dies, targets []db.Target, specs []db.Spec) (db.Deri
 		out.Summaries = append(out.Summaries, s)
 		m := frame.Paint(p, s.Q01, s.Q99)
 		out.SmallMaps = append(out.SmallMaps, db.SmallMap{Quantity: q, Size: m.Size, Low: m.Low, High: m.High, Cells: m.Cells})
-		if !math.IsNaN(target) && (out.State == "" || q.Name == "dominant_wavelength_nm" && more.from[q.Name] == "") {
+		if !math.IsNaN(target) && (out.State == "" || q.Name == "dominant_wavelength_nm" && more.From[q.Name] == "") {
 			out.State = uniformity.ColourState(s, window)
 		}
 	}

@@ -219,7 +219,7 @@ func (l *Loader) recompute(ctx context.Context, id int64) error {
 		return err
 	}
 	m.Quantities = slices.DeleteFunc(m.Quantities, func(q quantity.Quantity) bool { return m.DerivedFrom[q.Name] != "" })
-	planes, err := l.store.Planes(ctx, m)
+	planes, err := l.store.Planes(ctx, m) // those measured: the list holds no others now
 	if err != nil {
 		return err
 	}

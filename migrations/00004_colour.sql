@@ -20,13 +20,11 @@ ALTER TABLE recipe
 	ADD COLUMN colour_model jsonb; -- how the dominant wavelength follows from the peak; null: the default line model
 
 ALTER TABLE measurement
-	ADD COLUMN derived_from jsonb NOT NULL DEFAULT '{}', -- quantity → what it was computed from; its plane is no measured one
+	ADD COLUMN derived_from jsonb NOT NULL DEFAULT '{}', -- quantity → what it was computed from; it has a summary and a small map but no plane
 	ADD COLUMN suspects jsonb NOT NULL DEFAULT '[]';     -- what breaks physics in it
 
 -- +goose Down
--- Planes that were computed go with the column that tells them apart.
-DELETE FROM plane p USING measurement m
-WHERE p.wafer_id = m.wafer_id AND p.measurement_id = m.id AND p.measured_at = m.measured_at AND m.derived_from ? p.quantity;
+-- What is left of computed quantities would be taken for measured ones.
 DELETE FROM summary p USING measurement m
 WHERE p.wafer_id = m.wafer_id AND p.measurement_id = m.id AND p.measured_at = m.measured_at AND m.derived_from ? p.quantity;
 DELETE FROM small_map p USING measurement m

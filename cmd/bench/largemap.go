@@ -82,17 +82,21 @@ func (d *discard) Write(p []byte) (int, error) {
 	return io.Discard.Write(p)
 }
 
+// openBrowser starts a headless Chromium for a minute at most.
+func openBrowser(ctx context.Context) (context.Context, func()) {
+	options := append(chromedp.DefaultExecAllocatorOptions[:], chromedp.NoSandbox, chromedp.DisableGPU,
+		chromedp.Flag("disable-quic", true), chromedp.WindowSize(1280, 900))
+	ctx, stopAllocator := chromedp.NewExecAllocator(ctx, options...)
+	ctx, stopBrowser := chromedp.NewContext(ctx)
+	ctx, stopTime := context.WithTimeout(ctx, time.Minute)
+	return ctx, func() { stopTime(); stopBrowser(); stopAllocator() }
+}
+
 // drawnMS opens a wafer page in a real headless Chromium and reads what the
 // page itself measured.
 func drawnMS(ctx context.Context, url string) (float64, error) {
-	options := append(chromedp.DefaultExecAllocatorOptions[:], chromedp.NoSandbox, chromedp.DisableGPU,
-		chromedp.Flag("disable-quic", true), chromedp.WindowSize(1280, 900))
-	ctx, cancel := chromedp.NewExecAllocator(ctx, options...)
-	defer cancel()
-	ctx, cancel = chromedp.NewContext(ctx)
-	defer cancel()
-	ctx, cancel = context.WithTimeout(ctx, time.Minute)
-	defer cancel()
+	ctx, stop := openBrowser(ctx)
+	defer stop()
 	drawn := chromedp.CSS("#map-canvas[data-drawn-ms]")
 	if err := chromedp.Do(ctx, chromedp.Navigate(url), chromedp.WaitVisible(drawn)); err != nil {
 		return 0, fmt.Errorf("open %s: %w", url, err)
