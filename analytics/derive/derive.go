@@ -53,12 +53,14 @@ type Result struct {
 type Deriver struct {
 	dominant *colour.DominantTable
 	models   colour.PeakTables
+	floats   [][]float64 // of the call before, for use again
+	k        []int32
 }
 
 // Compute works out the quantities wanted, none named = all, that were not
 // measured and can be computed from what was.
 func (d *Deriver) Compute(src Source, wanted ...string) (Result, error) {
-	w := &work{Source: src, wanted: wanted, made: map[string][]float64{}}
+	w := &work{Source: src, wanted: wanted, made: map[string][]float64{}, d: d, spare: d.floats}
 	if err := d.fromChromaticity(w); err != nil {
 		return Result{}, err
 	}
@@ -74,6 +76,8 @@ type work struct {
 	Source
 	wanted []string
 	made   map[string][]float64 // planes as floats, each made once
+	d      *Deriver
+	spare  [][]float64 // what is left of d.floats
 	out    Result
 }
 
@@ -88,7 +92,7 @@ func (w *work) values(name string) []float64 {
 	}
 	for i := range w.Planes {
 		if w.Planes[i].Quantity == name {
-			v := w.Planes[i].Floats(nil)
+			v := w.Planes[i].Floats(w.buffer(w.Planes[i].Len())[:0])
 			w.made[name] = v
 			return v
 		}
@@ -96,10 +100,31 @@ func (w *work) values(name string) []float64 {
 	return nil
 }
 
+// buffer gives room for n values that lasts until the Deriver is used again.
+func (w *work) buffer(n int) []float64 {
+	if len(w.spare) > 0 && cap(w.spare[0]) >= n {
+		b := w.spare[0][:n]
+		w.spare = w.spare[1:]
+		return b
+	}
+	b := make([]float64, n)
+	if w.spare = nil; len(w.d.floats) < maxBuffers {
+		w.d.floats = append(w.d.floats, b)
+	}
+	return b
+}
+
+// maxBuffers bounds what a Deriver keeps: more than all quantities that anything
+// is computed from.
+const maxBuffers = 16
+
 func (w *work) add(name string, values []float64, places int, from string) {
 	w.made[name] = values
 	scale := math.Pow10(places)
-	k, some := make([]int32, len(values)), false
+	if cap(w.d.k) < len(values) {
+		w.d.k = make([]int32, len(values))
+	}
+	k, some := w.d.k[:len(values)], false
 	for i, v := range values {
 		if k[i] = wafermap.Missing32; math.Abs(v)*scale < math.MaxInt32 { // false for NaN
 			k[i], some = int32(math.Round(v*scale)), true
@@ -109,7 +134,11 @@ func (w *work) add(name string, values []float64, places int, from string) {
 		return
 	}
 	q, _ := quantity.Lookup(name)
-	w.out.Planes = append(w.out.Planes, wafermap.PackScaled(name, -places, k))
+	p := wafermap.PackScaled(name, -places, k)
+	if p.Encoding == wafermap.Int32 {
+		w.d.k = nil // the plane has taken it over
+	}
+	w.out.Planes = append(w.out.Planes, p)
 	w.out.Quantities = append(w.out.Quantities, q)
 	if w.out.From == nil {
 		w.out.From = map[string]string{}
@@ -130,7 +159,7 @@ func (d *Deriver) fromChromaticity(w *work) error {
 		}
 		d.dominant = table
 	}
-	wavelengths, purities := make([]float64, len(x)), make([]float64, len(x))
+	wavelengths, purities := w.buffer(len(x)), w.buffer(len(x))
 	d.dominant.Wavelengths(wavelengths, purities, x, y)
 	for i, v := range wavelengths {
 		if v < 0 { // complementary: no spectral hue to bin or chart
@@ -158,7 +187,7 @@ func (d *Deriver) fromPeak(w *work) error {
 	if model == nil {
 		model = colour.DefaultPeakModel(peak)
 	}
-	values := make([]float64, len(peak))
+	values := w.buffer(len(peak))
 	if err := d.models.Dominant(values, model, peak, w.values("fwhm_nm")); err != nil {
 		return err
 	}
@@ -174,12 +203,12 @@ func (w *work) efficiencies() {
 	flux, volt := w.values("radiant_flux_mw"), w.values("forward_voltage_v")
 	wavelength, of := w.photonWavelength()
 	if flux != nil && volt != nil && current > 0 && w.wants(WallPlug) {
-		values := make([]float64, len(flux))
+		values := w.buffer(len(flux))
 		colour.WallPlugEfficiencies(values, flux, volt, current)
 		w.add(WallPlug, values, sharePlaces, fmt.Sprintf("radiant flux and forward voltage at %g mA", current))
 	}
 	if flux != nil && wavelength != nil && current > 0 && w.wants(QuantumEfficiency) {
-		values := make([]float64, len(flux))
+		values := w.buffer(len(flux))
 		colour.ExternalQuantumEfficiencies(values, flux, wavelength, current)
 		w.add(QuantumEfficiency, values, sharePlaces, fmt.Sprintf("radiant flux and %s at %g mA", of, current))
 	}
