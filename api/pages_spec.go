@@ -47,8 +47,8 @@ func (s *Server) pageSpec(c echo.Context) error {
 	}
 	title := sp.Name + " v" + strconv.Itoa(sp.Version)
 	page := web.BinPage{Name: sp.Name, Version: sp.Version, Document: sp.Document, Versions: s.versionLines(sp, versions),
-		Facts:  specFacts(sp, web.Moment(sp.StoredAt, s.zone)),
-		Last:   lastOptions(last),
+		Facts: specFacts(sp, web.Moment(sp.StoredAt, s.zone)),
+		Last:  lastOptions(last), Lot: queryText(c, "lot"),
 		Yields: web.YieldsChart(title, yields, s.zone, "/bins/"+url.PathEscape(name)+"/yields.csv")}
 	page.Base = s.base(c, web.Base{Title: title, Section: "bins", Finding: web.SpecSentence(title, yields, sp.Latest), Charts: page.Yields != nil})
 	if err := s.lookAtSpec(c, &page, sp, versions[0].Version+1, last); err != nil {
@@ -67,7 +67,7 @@ func (s *Server) lookAtSpec(c echo.Context, page *web.BinPage, sp *db.Spec, next
 	}
 	describeSpec(page, spec)
 	ctx := c.Request().Context()
-	list, err := s.choose(ctx, spec, nil, last)
+	list, err := s.choose(ctx, spec, nil, queryText(c, "lot"), last)
 	if err != nil {
 		return err
 	}
@@ -109,7 +109,7 @@ func (s *Server) tryEdited(c echo.Context) error {
 	ctx := c.Request().Context()
 	list := []db.Chosen{}
 	if len(ids) > 0 {
-		if list, err = s.choose(ctx, spec, ids, 0); err != nil {
+		if list, err = s.choose(ctx, spec, ids, "", 0); err != nil {
 			return s.answerEdit(c, err)
 		}
 	}

@@ -26,14 +26,14 @@ type selections struct {
 	kept map[string][]db.Chosen
 }
 
-// choose finds the measurements of a trial: those named, else the last ones that
-// the specification is for.
-func (s *Server) choose(ctx context.Context, spec *binning.Spec, ids []string, last int) ([]db.Chosen, error) {
+// choose finds the measurements of a trial: those named, else the last ones, of a
+// lot if one is named, that the specification is for.
+func (s *Server) choose(ctx context.Context, spec *binning.Spec, ids []string, lot string, last int) ([]db.Chosen, error) {
 	if len(ids) > mostWafers || last > mostWafers {
 		return nil, fmt.Errorf("a specification is tried on at most %d wafers at once: %w", mostWafers, analytics.ErrTooLarge)
 	}
 	if len(ids) == 0 {
-		ms, err := s.store.SelectMeasurements(ctx, db.Selection{Kind: spec.Kind, Products: spec.Products, Last: last})
+		ms, err := s.store.SelectMeasurements(ctx, db.Selection{Kind: spec.Kind, Products: spec.Products, Lot: lot, Last: last})
 		if err != nil {
 			return nil, err
 		}

@@ -12,6 +12,7 @@ import (
 type trialParams struct {
 	Measurements []string `query:"measurements" doc:"numbers of the measurements to try it on, separated by commas; else the last ones it is for"`
 	Last         int      `query:"last" min:"1" max:"500" default:"20" doc:"how many of the last wafers, where none are named"`
+	Lot          string   `query:"lot" doc:"only wafers of this lot, where none are named"`
 	Risks        string   `query:"risks" enum:"yes,no" default:"yes" doc:"work out what the uncertainty of measurement does to every bin"`
 }
 
@@ -65,7 +66,7 @@ func (s *Server) trySpec(c echo.Context, p trialParams) error {
 		return err
 	}
 	ctx := c.Request().Context()
-	list, err := s.choose(ctx, spec, p.Measurements, p.Last)
+	list, err := s.choose(ctx, spec, p.Measurements, p.Lot, p.Last)
 	if err != nil {
 		return err
 	}

@@ -188,7 +188,7 @@ func TestSpecificationsKeepTheirVersions(t *testing.T) {
 		if err != nil {
 			t.Fatal(err)
 		}
-		specs, err := s.SpecsFor(ctx, "gannet-1", "probe")
+		specs, err := s.SpecsFor(ctx, "gannet-1", "probe", time.Now())
 		if err != nil || len(specs) != 1 {
 			t.Fatalf("%v, %d specifications", err, len(specs))
 		}
@@ -327,7 +327,7 @@ func TestADocumentWaitsForWhatIsDerivedWithoutIt(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	if c, err := l.WaferContext(ctx, "W-1", "probe", ""); err != nil || len(c.Specs) != 0 {
+	if c, err := l.WaferContext(ctx, "W-1", "probe", "", time.Now()); err != nil || len(c.Specs) != 0 {
 		t.Fatalf("%v, %d specifications; want none yet", err, len(c.Specs))
 	}
 	stored := make(chan error, 1)

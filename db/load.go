@@ -37,7 +37,7 @@ type Load struct {
 	taken    int
 }
 
-type specsKey struct{ product, kind string }
+type specsKey struct{ product, kind, day string }
 
 // BeginLoad opens the transaction.
 func (s *Store) BeginLoad(ctx context.Context) (l *Load, err error) {
@@ -69,7 +69,7 @@ type WaferContext struct {
 
 // WaferContext reads inside the load's transaction. It locks the wafer, so that
 // two loads of one wafer agree on which measurement is current.
-func (l *Load) WaferContext(ctx context.Context, wafer, kind, station string) (c *WaferContext, err error) {
+func (l *Load) WaferContext(ctx context.Context, wafer, kind, station string, measuredAt time.Time) (c *WaferContext, err error) {
 	defer wrap(&err, "wafer %s", wafer)
 	l.mu.Lock()
 	defer l.mu.Unlock()
@@ -95,10 +95,10 @@ func (l *Load) WaferContext(ctx context.Context, wafer, kind, station string) (c
 		return nil, err
 	}
 	c.Wafer = *w
-	key := specsKey{w.Product, kind}
+	key := specsKey{w.Product, kind, dayOf(measuredAt)}
 	specs, ok := l.specs[key]
 	if !ok {
-		if specs, err = specsFor(ctx, l.tx, w.Product, kind); err != nil {
+		if specs, err = specsFor(ctx, l.tx, w.Product, kind, key.day); err != nil {
 			return nil, err
 		}
 		l.specs[key] = specs

@@ -104,6 +104,7 @@ func (s *Store) Measurement(ctx context.Context, id int64) (m *Measurement, err 
 type Selection struct {
 	Kind     string
 	Products []string // none = of any product
+	Lot      string   // "" = of any lot
 	Last     int      // so many of the newest
 }
 
@@ -115,8 +116,8 @@ func (s *Store) SelectMeasurements(ctx context.Context, sel Selection) (ms []Mea
 		products = []string{}
 	}
 	return s.collectMeasurements(ctx, `
-		WHERE m.is_current AND m.kind = $1 AND ($2::text[] = '{}' OR p.name = ANY ($2))
-		ORDER BY m.measured_at DESC, m.id DESC LIMIT $3`, sel.Kind, products, sel.Last)
+		WHERE m.is_current AND m.kind = $1 AND ($2::text[] = '{}' OR p.name = ANY ($2)) AND ($4 = '' OR lower(w.lot) = lower($4))
+		ORDER BY m.measured_at DESC, m.id DESC LIMIT $3`, sel.Kind, products, sel.Last, sel.Lot)
 }
 
 // MeasurementsByID lists measurements by their numbers, newest first; a number

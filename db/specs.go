@@ -3,6 +3,7 @@ package db
 import (
 	"context"
 	"errors"
+	"strings"
 	"time"
 
 	"github.com/jackc/pgx/v5"
@@ -49,15 +50,23 @@ func (s *Store) SpecVersions(ctx context.Context, name string) (specs []Spec, er
 	return collectSpecs(s.pool.Query(ctx, selectSpec+` WHERE name = $1 ORDER BY version DESC`, name))
 }
 
-// SpecsFor lists the latest version of every spec that bins measurements of a
-// kind of a product's wafers.
-func (s *Store) SpecsFor(ctx context.Context, product, kind string) (specs []Spec, err error) {
+// SpecsFor lists, of every spec that bins measurements of a kind of a product's
+// wafers, the newest version that is in force on the day of measurement.
+func (s *Store) SpecsFor(ctx context.Context, product, kind string, measuredAt time.Time) (specs []Spec, err error) {
 	defer wrap(&err, "specifications of product %q", product)
-	return specsFor(ctx, s.pool, product, kind)
+	return specsFor(ctx, s.pool, product, kind, dayOf(measuredAt))
 }
 
-func specsFor(ctx context.Context, q querier, product, kind string) ([]Spec, error) {
-	return collectSpecs(q.Query(ctx, selectSpec+` WHERE latest AND kind = $2 AND $1 = ANY (products) ORDER BY name`, product, kind))
+// dayOf is the date that a specification's validity is asked for, as binning.Spec
+// reads it.
+func dayOf(t time.Time) string { return t.UTC().Format(time.DateOnly) }
+
+func specsFor(ctx context.Context, q querier, product, kind, day string) ([]Spec, error) {
+	return collectSpecs(q.Query(ctx, `WITH in_force AS (
+		SELECT DISTINCT ON (name) * FROM spec
+		WHERE coalesce(valid_from <= $3::date, true) AND coalesce(valid_until >= $3::date, true)
+		ORDER BY name, version DESC)`+strings.Replace(selectSpec, "FROM spec", "FROM in_force", 1)+`
+		WHERE kind = $2 AND $1 = ANY (products) ORDER BY name`, product, kind, day))
 }
 
 // PutSpec stores document as the next version of its spec, or answers the

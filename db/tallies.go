@@ -28,8 +28,8 @@ func (t *tallyTargets) tally(measurement int64) (*Tally, error) {
 	return out, json.Unmarshal(t.cells, &out.Cells)
 }
 
-// Tallies lists the stored tallies of a measurement under the latest version of
-// each specification.
+// Tallies lists the stored tallies of a measurement under the newest version of
+// each specification that it was tallied under.
 func (s *Store) Tallies(ctx context.Context, measurementID int64) (tallies []Tally, err error) {
 	defer wrap(&err, "tallies of measurement %d", measurementID)
 	at, err := keyOf(ctx, s.pool, measurementID)
@@ -37,9 +37,9 @@ func (s *Store) Tallies(ctx context.Context, measurementID int64) (tallies []Tal
 		return nil, err
 	}
 	rows, err := s.pool.Query(ctx, `
-		SELECT sp.name, sp.version, t.dies, t.tested, t.good, t.denominator, t.over_layout, t.cells
-		FROM tally t JOIN spec sp ON sp.id = t.spec_id AND sp.latest
-		WHERE t.wafer_id = $1 AND t.measurement_id = $2 AND t.measured_at = $3 ORDER BY sp.name`, at.wafer, at.id, at.measuredAt)
+		SELECT DISTINCT ON (sp.name) sp.name, sp.version, t.dies, t.tested, t.good, t.denominator, t.over_layout, t.cells
+		FROM tally t JOIN spec sp ON sp.id = t.spec_id
+		WHERE t.wafer_id = $1 AND t.measurement_id = $2 AND t.measured_at = $3 ORDER BY sp.name, sp.version DESC`, at.wafer, at.id, at.measuredAt)
 	if err != nil {
 		return nil, err
 	}

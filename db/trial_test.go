@@ -118,3 +118,41 @@ func TestTrialOnComputedQuantities(t *testing.T) {
 		t.Error("a measurement there is not was found")
 	}
 }
+
+// TestVersionsInForce: a version that begins later leaves the one before in force
+// until then.
+func TestVersionsInForce(t *testing.T) {
+	t.Parallel()
+	s := dbtest.New(t)
+	put := func(document string) {
+		t.Helper()
+		l, err := s.BeginLoad(t.Context())
+		if err != nil {
+			t.Fatal(err)
+		}
+		defer l.Rollback(t.Context())
+		if _, err := l.PutSpec(t.Context(), db.NewSpec(parsed(t, document), document, "R. Aalto", "as agreed")); err != nil {
+			t.Fatal(err)
+		}
+		if _, err := l.Commit(t.Context(), db.Source{Name: "spec", Format: "specification", SeenAt: time.Now(), Offset: -1}); err != nil {
+			t.Fatal(err)
+		}
+	}
+	base := "specification: a\nkind: pl\nproducts: [blue]\naxes: [{axis: W, quantity: dominant_wavelength_nm, edges: [453, 456]}]\n"
+	put(base)
+	put(base + "valid: {from: 2027-01-01, until: 2027-06-30}\n")
+	for day, want := range map[string]int{"2026-12-31": 1, "2027-01-01": 2, "2027-06-30": 2, "2027-07-01": 1} {
+		at, err := time.Parse(time.DateOnly, day)
+		if err != nil {
+			t.Fatal(err)
+		}
+		specs, err := s.SpecsFor(t.Context(), "blue", "pl", at.Add(10*time.Hour))
+		if err != nil || len(specs) != 1 || specs[0].Version != want {
+			t.Errorf("%s: %v, %+v; want version %d", day, err, specs, want)
+		}
+	}
+	latest, err := s.Spec(t.Context(), "a", 0)
+	if err != nil || latest.Version != 2 || latest.Author != "R. Aalto" || latest.Reason != "as agreed" || latest.ValidFrom != "2027-01-01" || latest.ValidUntil != "2027-06-30" {
+		t.Errorf("%v: %+v", err, latest)
+	}
+}

@@ -235,12 +235,12 @@ func (q *listQuery) rowsSQL(join, spec string) string {
 		s.quantity, s.figures, t.name, t.version, t.dies, t.tested, t.good, t.denominator, t.over_layout, t.cells`+fromWafer, 1) + join + `
 	LEFT JOIN summary s ON s.wafer_id = w.id AND s.measurement_id = m.id AND s.measured_at = m.measured_at AND s.quantity = m.main_quantity
 	LEFT JOIN LATERAL (
-		SELECT sp.name, sp.version, ta.* FROM tally ta JOIN spec sp ON sp.id = ta.spec_id AND sp.latest
+		SELECT sp.name, sp.version, ta.* FROM tally ta JOIN spec sp ON sp.id = ta.spec_id
 		WHERE ta.wafer_id = w.id AND ta.measurement_id = m.id AND ta.measured_at = m.measured_at`
 	if spec != "" {
 		sql += ` AND sp.name = ` + q.arg(spec)
 	}
-	return sql + ` ORDER BY sp.name LIMIT 1) t ON true` + q.clause()
+	return sql + ` ORDER BY sp.name, sp.version DESC LIMIT 1) t ON true` + q.clause()
 }
 
 func scanWaferRow(row pgx.CollectableRow, declared declaredQuantities) (WaferRow, error) {

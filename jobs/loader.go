@@ -173,7 +173,7 @@ func hand[T any](ctx context.Context, to chan<- T, v T) error {
 
 // prepare derives everything that is stored beside the planes.
 func (l *Loader) prepare(ctx context.Context, tx *db.Load, m *reader.Measurement) (*db.NewMeasurement, error) {
-	about, err := tx.WaferContext(ctx, m.Wafer, m.Kind, m.Station)
+	about, err := tx.WaferContext(ctx, m.Wafer, m.Kind, m.Station, m.MeasuredAt)
 	if err != nil {
 		return nil, err
 	}
@@ -227,7 +227,7 @@ func (l *Loader) recompute(ctx context.Context, id int64) error {
 	if err != nil {
 		return err
 	}
-	specs, err := l.store.SpecsFor(ctx, w.Product, m.Kind)
+	specs, err := l.store.SpecsFor(ctx, w.Product, m.Kind, m.MeasuredAt)
 	if err != nil {
 		return err
 	}

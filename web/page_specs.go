@@ -40,6 +40,7 @@ type BinPage struct {
 
 	Look   SpecLook
 	Last   []Option // how many wafers are looked at
+	Lot    string   // of which lot; "" = of any
 	Views  []Option // of chromaticities
 	Editor *SpecEditor
 }

@@ -191,6 +191,8 @@ func FuzzParse(f *testing.F) {
 	f.Add([]byte(ruleDocument("q between [1, 2] or (q >= 3e0 and b != -.5)")))
 	f.Add([]byte(axisDocument("edges: [1, 2]", "guard: 1e-3", "names: [a]")))
 	f.Add([]byte("a: &b [*b]"))
+	f.Add([]byte(seaGlass))
+	f.Add([]byte(strings.Replace(manyPolygons(2, 2, "guard: 1.645 u"), "kind: probe", "kind: probe\nvalid: {from: 2026-01-01}\nuncertainty: {cie_x: 0.001, cie_y: 1e-3}", 1)))
 	f.Fuzz(func(t *testing.T, document []byte) {
 		s, err := Parse(document)
 		if err != nil {

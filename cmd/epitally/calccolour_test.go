@@ -3,11 +3,15 @@ package main
 import (
 	"bytes"
 	"encoding/json"
+	"fmt"
 	"math"
 	"os"
 	"path/filepath"
 	"strings"
 	"testing"
+
+	"epitally/analytics/colour"
+	"epitally/jobs/reader"
 )
 
 func calcColourOf(t *testing.T, stdin string, args ...string) (string, error) {
@@ -87,6 +91,50 @@ func TestCalcColourRefuses(t *testing.T) {
 		out, err := calcColourOf(t, c.stdin, strings.Fields(c.args)...)
 		if err == nil || !strings.Contains(err.Error(), c.want) {
 			t.Errorf("%s: %v, want %q\n%s", c.args, err, c.want, out)
+		}
+	}
+}
+
+// The relation is found again from dies drawn by it, and the catalogue reads what
+// is printed.
+func TestCalcPeakModel(t *testing.T) {
+	t.Parallel()
+	rows := "peak_wavelength_nm,dominant_wavelength_nm\n"
+	for i := range 200 {
+		p := 448 + 0.05*float64(i)
+		rows += fmt.Sprintf("%.2f,%.3f\n", p, p+4-0.1*(p-453))
+	}
+	file := filepath.Join(t.TempDir(), "dies.csv")
+	if err := os.WriteFile(file, []byte(rows), 0o600); err != nil {
+		t.Fatal(err)
+	}
+	out, _, err := runCommand(t, "calc", "peak-model", "--dies", file)
+	if err != nil || !strings.Contains(out, "offset_nm: 4.0") || !strings.Contains(out, "slope: -0.1000") || !strings.Contains(out, "fitted_to: 200 dies") {
+		t.Fatalf("%v: %s", err, out)
+	}
+	line := out[strings.LastIndex(strings.TrimSpace(out), "\n")+1:]
+	c, err := reader.ParseCatalogue([]byte("catalogue: c\nrecipes:\n  - recipe: blue\n    " + line))
+	if err != nil || c.Recipes[0].Colour == nil || c.Recipes[0].Colour.Slope != -0.1 {
+		t.Errorf("the catalogue does not read it: %v\n%s", err, line)
+	}
+	spectrum := filepath.Join(t.TempDir(), "line.csv")
+	s, err := colour.DefaultLineModel(455).Spectrum(455, 19)
+	if err != nil {
+		t.Fatal(err)
+	}
+	text := ""
+	for nm := 380; nm <= 700; nm++ {
+		text += fmt.Sprintf("%d,%.6f\n", nm, colour.DefaultLineModel(455).Power(float64(nm), s.PeakNM(), 19))
+	}
+	if err := os.WriteFile(spectrum, []byte(text), 0o600); err != nil {
+		t.Fatal(err)
+	}
+	if out, _, err = runCommand(t, "calc", "peak-model", "--spectrum", spectrum); err != nil || !strings.Contains(out, "colour: {model: split-pearson, ratio: ") {
+		t.Errorf("%v: %s", err, out)
+	}
+	for _, bad := range [][]string{{}, {"--dies", file, "--spectrum", spectrum}, {"--dies", "/nowhere.csv"}, {"--dies", file, "--peak", "none"}} {
+		if _, _, err := runCommand(t, append([]string{"calc", "peak-model"}, bad...)...); err == nil {
+			t.Errorf("%v is taken", bad)
 		}
 	}
 }

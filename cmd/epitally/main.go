@@ -39,6 +39,7 @@ func commands() []command {
 		{"spec check", "look for overlaps, gaps and other slips in a specification", specCheck},
 		{"spec compare", "tell which dies change bins between two specifications, and what that is worth", specCompare},
 		{"calc colour", "colour and efficiency of a spectrum, a chromaticity, or a peak and width", calcColour},
+		{"calc peak-model", "fit how a recipe's dominant wavelength follows from its peak", calcPeakModel},
 		{"calc summary", "summarise one column of a CSV file", calcSummary},
 		{"gallery", "write every page from canned data as files, without a database", gallery},
 		{"health", "ask a running server whether it is ready", health},
