@@ -188,12 +188,12 @@ func (s *Server) look(ctx context.Context, t *db.Trial, list []db.Chosen, ids []
 
 func (s *Server) quickLook(t *db.Trial, ids []string, as shownAs) web.SpecLook {
 	wafers := "the last " + web.Plural(t.Wafers, "wafer", "wafers")
-	look := web.SpecLook{Wafers: wafers, Good: t.Good(), Total: t.Denominator, Verdict: web.TrialSentence(t.Good(), t.Denominator, as.before, wafers)}
 	numbers := web.BinNumbers{Spec: t.Spec, Counts: t.Counts, Denominator: t.Denominator, Wafers: t.Wafers}
 	if t.Risk != nil {
 		numbers.Risk, numbers.RiskCounts, numbers.RiskWafers = &t.Risk.Conformity, t.Risk.Counts, t.Risk.Wafers
 	}
-	look.Bins = web.NewBinTable(numbers)
+	look := web.SpecLook{Wafers: wafers, Good: t.Good(), Total: t.Denominator, Bins: web.NewBinTable(numbers),
+		Verdict: web.TrialSentence(t.Good(), t.Denominator, as.before, numbers.ConfidentShare(), wafers)}
 	plots := web.BinPlots{Spec: t.Spec, Counts: t.Counts, Whole: as.whole, Boxes: as.boxes, Edit: true}
 	if len(ids) > 0 {
 		plots.Density = func(d web.DensityPlot) string { return densityURL(d, ids) }

@@ -28,11 +28,12 @@ func (b BinPlots) region(r *binning.Region, d binning.Dimension, id string) BinP
 	for i := range r.Cells {
 		b.regionCell(f, r, d, i)
 	}
-	taken := f.handleRoom(r, b.Edit)
+	edit := b.Edit && !b.Whole // handles would cover cells that small
+	taken := f.handleRoom(r, edit)
 	for i := range r.Cells {
 		b.regionLabel(f, r, d, i, &taken)
 	}
-	if b.Edit {
+	if edit {
 		f.cornerHandles(r)
 	}
 	f.put(`</g>`)
@@ -137,9 +138,12 @@ func (f *frame) diagram(space binning.Space) {
 		fmt.Fprintf(&path, "%s %s ", at(f.x(x)), at(f.y(y)))
 	}
 	f.put(`<polygon class="locus" points="%s"/>`, path.String())
+	var names []textBox
+	x, y := in(colour.WhiteE)
+	f.spot("white-mark", x, y, 4, "white E", &names)
 	for _, nm := range []int{460, 470, 480, 490, 500, 510, 520, 530, 540, 550, 560, 570, 580, 590, 600, 620, 640} {
 		x, y := in(colour.Locus(float64(nm)))
-		f.spot("locus-mark", x, y, 2.5, fmt.Sprintf("%d nm", nm))
+		f.spot("locus-mark", x, y, 2.5, fmt.Sprintf("%d nm", nm), &names)
 	}
 	path.Reset()
 	for mired := 40.0; mired <= 1000; mired += 5 {
@@ -147,25 +151,37 @@ func (f *frame) diagram(space binning.Space) {
 		fmt.Fprintf(&path, "%s %s ", at(f.x(x)), at(f.y(y)))
 	}
 	f.put(`<polyline class="planckian" points="%s"/>`, path.String())
-	for _, kelvin := range []float64{2000, 2700, 3000, 3500, 4000, 5000, 6500, 10000} {
+	for _, kelvin := range []float64{2000, 3000, 4000, 6500, 10000, 2700, 3500, 5000} {
 		x, y := in(colour.Planckian(kelvin))
-		f.spot("planckian-mark", x, y, 2.5, With(kelvin, 0, "K"))
+		f.spot("planckian-mark", x, y, 2.5, With(kelvin, 0, "K"), &names)
 	}
-	x, y := in(colour.WhiteE)
-	f.spot("white-mark", x, y, 4, "white E")
 }
 
-// spot marks a place inside the plotting area with its name.
-func (f *frame) spot(class string, x, y, radius float64, name string) {
+// spot marks a place inside the plotting area with its name, to the right, the
+// left, above or below, where no other name stands; if there is room nowhere the
+// mark stands alone.
+func (f *frame) spot(class string, x, y, radius float64, name string, taken *[]textBox) {
 	if x < f.left || x > f.right || y < f.bottom || y > f.top {
 		return
 	}
-	f.put(`<circle class="%s" cx="%s" cy="%s" r="%g"/>`, class, at(f.x(x)), at(f.y(y)), radius)
-	anchor, dx := "start", 7.0
-	if f.x(x) > f.width-marginRest-70 {
-		anchor, dx = "end", -7
+	px, py := f.x(x), f.y(y)
+	f.put(`<circle class="%s" cx="%s" cy="%s" r="%g"><title>%s</title></circle>`, class, at(px), at(py), radius, html.EscapeString(name))
+	width := 7.5*float64(len([]rune(name))) + 4
+	for _, place := range []struct {
+		dx, dy float64
+		anchor string
+	}{{8, -5, "start"}, {-8, -5, "end"}, {8, 14, "start"}, {-8, 14, "end"}} {
+		box := textBox{px + place.dx + width/2, py + place.dy - 5, width, 15}
+		if place.anchor == "end" {
+			box.x = px + place.dx - width/2
+		}
+		if box.x-width/2 < marginLeft || box.x+width/2 > f.width-marginRest || box.meetsAny(*taken) {
+			continue
+		}
+		*taken = append(*taken, box, textBox{px, py, 8, 8})
+		f.text("mark", px+place.dx, py+place.dy, place.anchor, name)
+		return
 	}
-	f.text("mark", f.x(x)+dx, f.y(y)-6, anchor, name)
 }
 
 func (b BinPlots) regionCell(f *frame, r *binning.Region, d binning.Dimension, i int) {

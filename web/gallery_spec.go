@@ -39,7 +39,7 @@ func cannedLook() SpecLook {
 			n.Risk.WronglyAccepted[i], n.Risk.WronglyRejected[i], n.Risk.Confident[i] = 0.031*float64(n.Counts[i]), 0.004*float64(n.Counts[i]), n.Counts[i]*9/10
 		}
 	}
-	look := SpecLook{Wafers: "the last 20 wafers", Bins: NewBinTable(n), Verdict: TrialSentence(183_204, 290_320, 180_114, "the last 20 wafers")}
+	look := SpecLook{Wafers: "the last 20 wafers", Bins: NewBinTable(n), Verdict: TrialSentence(183_204, 290_320, 180_114, 0.58, "the last 20 wafers")}
 	look.Plots = BinPlots{Spec: spec, Counts: n.Counts, Edit: true}.Draw()
 	for _, f := range spec.Check() {
 		look.Findings = append(look.Findings, SpecFinding{Kind: string(f.Kind), Says: f.Says, Line: f.Line})

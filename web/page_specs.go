@@ -147,6 +147,21 @@ func NewBinTable(n BinNumbers) BinTable {
 	return t
 }
 
+// ConfidentShare is the share of all dies that are in sellable bins and conform
+// with 95 % confidence; NaN when risks were not worked out.
+func (n BinNumbers) ConfidentShare() float64 {
+	if n.Risk == nil || n.Denominator == 0 {
+		return math.NaN()
+	}
+	sum := 0.0
+	for i, c := range n.Spec.Cells()[:n.Spec.Bins()] {
+		if c.Class == binning.Sellable && n.RiskCounts[i] > 0 {
+			sum += float64(n.Risk.Confident[i]) / float64(n.RiskCounts[i]) * float64(n.Counts[i])
+		}
+	}
+	return sum / float64(n.Denominator)
+}
+
 // smallShare writes a share that may be far below a percent.
 func smallShare(v float64) string {
 	switch {
@@ -160,7 +175,9 @@ func smallShare(v float64) string {
 
 // TrialSentence tells what a specification yields on the wafers looked at, and
 // against before dies, what a change does; before < 0 = nothing was changed.
-func TrialSentence(good, total, before int, wafers string) Sentence {
+// confident is the share of all dies that sell and conform with 95 % confidence,
+// NaN when it was not worked out.
+func TrialSentence(good, total, before int, confident float64, wafers string) Sentence {
 	var s Sentence
 	if total == 0 {
 		s.say("There are no measured wafers for it, so what it yields cannot be told.")
@@ -170,6 +187,9 @@ func TrialSentence(good, total, before int, wafers string) Sentence {
 	s.stress(Count(good)+" of "+Count(total)+" dies", "")
 	s.say(" sell, ")
 	s.stress(shareText(good, total), "")
+	if !math.IsNaN(confident) {
+		s.say(", and " + Number(100*confident, 1) + thinSpace + "% conform with 95" + thinSpace + "% confidence")
+	}
 	if before >= 0 {
 		s.say("; before the change " + shareText(before, total) + ", so ")
 		s.stress(Signed(float64(good-before), 0)+" dies", "")
