@@ -122,16 +122,21 @@ func firstTallied(t *testing.T, list *db.WaferPage) string {
 
 type seenPage struct{ sentence, drawn string }
 
+// browser starts a real headless Chromium for the test, a minute at most.
+func browser(t *testing.T) context.Context {
+	t.Helper()
+	options := append(chromedp.DefaultExecAllocatorOptions[:], chromedp.NoSandbox, chromedp.DisableGPU, chromedp.WindowSize(1280, 900))
+	ctx, stopAllocator := chromedp.NewExecAllocator(context.Background(), options...)
+	ctx, stopBrowser := chromedp.NewContext(ctx)
+	ctx, stopTime := context.WithTimeout(ctx, time.Minute)
+	t.Cleanup(func() { stopTime(); stopBrowser(); stopAllocator() })
+	return ctx
+}
+
 // browse opens a wafer in a real headless Chromium and waits for its map.
 func browse(t *testing.T, url string) (seen seenPage) {
 	t.Helper()
-	options := append(chromedp.DefaultExecAllocatorOptions[:], chromedp.NoSandbox, chromedp.DisableGPU, chromedp.WindowSize(1280, 900))
-	ctx, cancel := chromedp.NewExecAllocator(context.Background(), options...)
-	defer cancel()
-	ctx, cancel = chromedp.NewContext(ctx)
-	defer cancel()
-	ctx, cancel = context.WithTimeout(ctx, time.Minute)
-	defer cancel()
+	ctx := browser(t)
 	drawn := chromedp.CSS("#map-canvas[data-drawn]")
 	if err := chromedp.Do(ctx, chromedp.Navigate(url), chromedp.WaitVisible(drawn)); err != nil {
 		t.Fatalf("open %s: %v", url, err)

@@ -1,14 +1,12 @@
 package main
 
 import (
-	"context"
 	"encoding/json"
 	"net/http"
 	"os"
 	"path/filepath"
 	"strings"
 	"testing"
-	"time"
 
 	"github.com/chromedp/chromedp"
 
@@ -35,13 +33,7 @@ func greenFab(t *testing.T) (*App, Config) {
 func TestASpecificationIsChangedByHand(t *testing.T) {
 	t.Parallel()
 	app, c := greenFab(t)
-	options := append(chromedp.DefaultExecAllocatorOptions[:], chromedp.NoSandbox, chromedp.DisableGPU, chromedp.WindowSize(1280, 900))
-	ctx, cancel := chromedp.NewExecAllocator(context.Background(), options...)
-	defer cancel()
-	ctx, cancel = chromedp.NewContext(ctx)
-	defer cancel()
-	ctx, cancel = context.WithTimeout(ctx, time.Minute)
-	defer cancel()
+	ctx := browser(t)
 	corner := chromedp.CSS("svg.binplot circle.handle")
 	if err := chromedp.Do(ctx, chromedp.Navigate(app.URL()+"/bins/reed-green"), chromedp.WaitVisible(corner)); err != nil {
 		t.Fatal(err)
