@@ -3,6 +3,7 @@ package api
 import (
 	"encoding/csv"
 	"encoding/json"
+	"epitally/analytics/colour"
 	"fmt"
 	"net/http"
 	"net/url"
@@ -184,5 +185,31 @@ func TestChartsAsCSV(t *testing.T) {
 	w := do(f, request(http.MethodGet, "/bins/harbour-blue/yields.csv", ""))
 	if rows, err := csv.NewReader(w.Body).ReadAll(); err != nil || len(rows) != 2 || rows[1][0] != "K-1" {
 		t.Errorf("yields: %v, %v", rows, err)
+	}
+}
+
+// TestSuspectMeasurementsAreShown stores a measurement whose flux is in the wrong
+// unit, and one whose flux changed alone, and looks at their pages.
+func TestSuspectMeasurementsAreShown(t *testing.T) {
+	t.Parallel()
+	f := setup(t)
+	suspect := probeOf(t, "K-9", noon, f.grid, f.layout)
+	suspect.Derived.Suspects = []colour.Suspect{{Kind: colour.QuantumAboveOne, Says: "300 of 301 dies: more photons come out than electrons go in", LikelyCause: "the unit of flux", Dies: 300, Of: 301}}
+	suspect.Derived.DerivedFrom = map[string]string{voltage: "nothing at all"}
+	f.put(t, suspect)
+	w := do(f, request("GET", "/wafers/K-9", ""))
+	d, err := goquery.NewDocumentFromReader(w.Body)
+	if err != nil || w.Code != http.StatusOK {
+		t.Fatalf("%d %v", w.Code, err)
+	}
+	if text := d.Find(".suspect").Text(); !strings.Contains(text, "more photons come out than electrons go in") || !strings.Contains(text, "Look first at the unit of flux") {
+		t.Errorf("%q", text)
+	}
+	if text := d.Find("table.stats").Text(); !strings.Contains(text, "computed from nothing at all") {
+		t.Errorf("the figures do not say what was computed: %q", text)
+	}
+	sound := do(f, request("GET", "/wafers/K-1", ""))
+	if page, err := goquery.NewDocumentFromReader(sound.Body); err != nil || page.Find(".suspect").Length() != 0 {
+		t.Errorf("a sound measurement is suspect: %v", err)
 	}
 }
