@@ -12,7 +12,7 @@ import (
 // Limits of regions.
 const (
 	maxRegions  = 4
-	maxCells    = 2000
+	maxCells    = 600
 	maxShapes   = 50
 	maxCorners  = 500
 	circleSides = 360

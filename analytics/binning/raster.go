@@ -15,7 +15,12 @@ type raster struct {
 	codes      []uint16 // per square: cell + 1, 0 for none, or mixedSquare
 	first      []int32  // of mixed squares: where their candidates begin; by square's row-major number
 	candidates []int    // in the region's order, −1 ends a list
+	all        []int    // every cell, when lists would be too long; else nil
 }
+
+// mostCandidates bounds the lists' memory to some tens of megabytes. Cells that
+// all lie over one another reach it; then every cell is asked.
+const mostCandidates = 1 << 22
 
 const mixedSquare = math.MaxUint16
 
@@ -99,6 +104,16 @@ func (g *raster) list(r *Region) {
 		}
 	}
 	each(func(square, _ int) { counts[square]++ })
+	most := 0
+	for i, n := range counts {
+		if g.codes[i] == mixedSquare {
+			most += int(n) + 1
+		}
+	}
+	if most > mostCandidates {
+		g.all = r.order
+		return
+	}
 	g.first = make([]int32, len(counts))
 	total := int32(0)
 	for i, n := range counts {
@@ -156,6 +171,9 @@ func (g *raster) at(r *Region, p point) int {
 }
 
 func (g *raster) candidatesOf(square int) []int {
+	if g.all != nil {
+		return g.all
+	}
 	from := g.first[square]
 	to := from
 	for g.candidates[to] >= 0 {

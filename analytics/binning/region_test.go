@@ -229,3 +229,26 @@ func TestSeriesRefuse(t *testing.T) {
 		}
 	}
 }
+
+// Hundreds of cells over one another must neither take memory without end nor
+// change where a die falls.
+func TestCellsOverOneAnother(t *testing.T) {
+	t.Parallel()
+	rng := rand.New(rand.NewPCG(7, 7))
+	var b strings.Builder
+	b.WriteString("specification: heap\nkind: probe\nregions:\n  - region: C\n    cells:\n")
+	for i := range maxCells {
+		fmt.Fprintf(&b, "      - {name: c%d, polygon: [[%.4f, 0.1], [0.6, %.4f], [%.4f, 0.6]]}\n", i, 0.1+0.2*rng.Float64(), 0.1+0.2*rng.Float64(), 0.1+0.2*rng.Float64())
+	}
+	s := mustParse(t, b.String())
+	r := s.regions[0]
+	for range 2000 {
+		p := point{0.05 + 0.6*rng.Float64(), 0.05 + 0.6*rng.Float64()}
+		if got, want := r.raster.at(r, p), r.classify(p, r.order); got != want {
+			t.Fatalf("(%g, %g): %d, want %d", p.x, p.y, got, want)
+		}
+	}
+	if _, err := Parse([]byte(b.String() + "      - {name: more, polygon: [[0.1, 0.1], [0.2, 0.1], [0.2, 0.2]]}\n")); err == nil || !strings.Contains(err.Error(), "at most 600") {
+		t.Errorf("one cell more: %v", err)
+	}
+}
