@@ -70,8 +70,8 @@ var planckianTable = sync.OnceValue(func() (table []node) {
 // The error wraps ErrNotMeaningful more than 0.05 from the locus, or below 1000 K
 // or above 100,000 K, and analytics.ErrInvalid where p is no chromaticity.
 func CCTOf(p XY) (CCT, error) {
-	if !(p.X >= 0 && p.Y > 0 && p.X+p.Y <= 1) {
-		return CCT{}, invalid("x %g, y %g is no chromaticity", p.X, p.Y)
+	if !p.sound() || p.X+p.Y > 1+outsideLocus {
+		return CCT{}, invalid("x %g, y %g is no chromaticity: y lies above 0, x not below 0, and they add up to at most 1", p.X, p.Y)
 	}
 	u, v := p.uv60()
 	table := planckianTable()
@@ -80,6 +80,9 @@ func CCTOf(p XY) (CCT, error) {
 		if math.Hypot(u-n.u, v-n.v) < math.Hypot(u-table[nearest].u, v-table[nearest].v) {
 			nearest = i
 		}
+	}
+	if away := math.Hypot(u-table[nearest].u, v-table[nearest].v); away > 2*farthest {
+		return CCT{}, farFromLocus(p, away)
 	}
 	if nearest == 0 || nearest == len(table)-1 {
 		return CCT{}, notMeaningful("x %.4f, y %.4f has a colour temperature outside %d K to %d K", p.X, p.Y, lowestCCT, highestCCT)
@@ -90,11 +93,15 @@ func CCTOf(p XY) (CCT, error) {
 	}
 	switch {
 	case math.Abs(c.Duv) > farthest:
-		return CCT{}, notMeaningful("x %.4f, y %.4f is %.3f from the Planckian locus in u, v, more than 0.05: it has no colour temperature", p.X, p.Y, math.Abs(c.Duv))
+		return CCT{}, farFromLocus(p, math.Abs(c.Duv))
 	case !(c.K >= lowestCCT && c.K <= highestCCT):
 		return CCT{}, notMeaningful("x %.4f, y %.4f has a colour temperature outside %d K to %d K", p.X, p.Y, lowestCCT, highestCCT)
 	}
 	return c, nil
+}
+
+func farFromLocus(p XY, away float64) error {
+	return notMeaningful("x %.4f, y %.4f is %.3f from the Planckian locus in u, v, more than %g: it has no colour temperature", p.X, p.Y, away, farthest)
 }
 
 // threePoints is the combined solution from three points of the locus.
@@ -119,7 +126,8 @@ func threePoints(u, v float64, a, m, b node) CCT {
 
 // XYFromCCT is the chromaticity of a colour temperature and D_uv: from the locus
 // along its normal in CIE 1960 u, v. Errors wrap analytics.ErrInvalid outside
-// 1000 K to 100,000 K and |D_uv| ≤ 0.05.
+// 1000 K to 100,000 K and |D_uv| ≤ 0.05, and where that leads out of all colours, as
+// it does above low temperatures.
 func XYFromCCT(c CCT) (XY, error) {
 	if !(c.K >= lowestCCT && c.K <= highestCCT) || !(math.Abs(c.Duv) <= farthest) {
 		return XY{}, invalid("%g K with D_uv %g: colour temperatures lie between %d K and %d K, D_uv within ±%g", c.K, c.Duv, lowestCCT, highestCCT, farthest)
@@ -129,5 +137,9 @@ func XYFromCCT(c CCT) (XY, error) {
 	du, dv := a.u-b.u, a.v-b.v // towards lower temperatures: u grows, so that the left-hand normal points up
 	length := math.Hypot(du, dv)
 	u, v := m.u-c.Duv*dv/length, m.v+c.Duv*du/length
-	return UV{u, 1.5 * v}.XY(), nil
+	p := UV{u, 1.5 * v}.XY()
+	if !p.sound() || p.X+p.Y > 1 {
+		return XY{}, invalid("%g K with D_uv %g lies outside the spectral locus: no light has this colour temperature so far from the Planckian locus", c.K, c.Duv)
+	}
+	return p, nil
 }

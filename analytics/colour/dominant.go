@@ -18,6 +18,15 @@ const (
 	outsideLocus = 0.005 // farther outside the locus the reading is wrong, not noisy
 )
 
+// reddestNM is where the locus ends: all light from here on has one chromaticity,
+// within 10⁻⁷. Beyond, the table only goes to and fro by its rounding.
+const reddestNM = 699
+
+// nearEnd is how near the purple line may be met to an end of the locus, in x, y,
+// and still be that end: the last digit of printed chromaticities. Without it deep
+// red would turn complementary by rounding.
+const nearEnd = 0.0001
+
 // chord is a part of the spectral locus or the purple line, seen from white.
 type chord struct {
 	ax, ay, bx, by float64 // from white to its ends
@@ -33,17 +42,17 @@ type fan struct {
 	chords []chord // the last is the purple line
 }
 
-// newFan builds the outline. At the ends of the spectrum the tabulated locus
-// halts and runs back by a few 10⁻⁵; wavelengths there that lead no farther
-// around white are left out.
+// newFan builds the outline, from 360 nm to 699 nm. Where the tabulated locus halts
+// or runs back by its rounding, wavelengths that lead no farther around white are
+// left out.
 func newFan(white XY) (*fan, error) {
 	if !(white.X > 0 && white.Y > 0 && white.X+white.Y < 1) {
 		return nil, invalid("white (%g, %g) is no chromaticity: x and y lie above 0 and add up to less than 1", white.X, white.Y)
 	}
 	f := &fan{white: white}
 	type vertex struct{ x, y, nm, sum float64 }
-	vertices := make([]vertex, 0, len(observer))
-	for i := range observer {
+	vertices := make([]vertex, 0, reddestNM-firstNM+1)
+	for i := range observer[:reddestNM-firstNM+1] {
 		sum := observer[i][0] + observer[i][1] + observer[i][2]
 		v := vertex{observer[i][0]/sum - white.X, observer[i][1]/sum - white.Y, float64(firstNM + i), sum}
 		if n := len(vertices); n > 0 && cross(vertices[n-1].x, vertices[n-1].y, v.x, v.y) >= 0 {
@@ -62,7 +71,9 @@ func newFan(white XY) (*fan, error) {
 	return f, nil
 }
 
-func cross(ax, ay, bx, by float64) float64 { return ax*by - ay*bx }
+// cross is a × b. The conversions forbid fused operations, whose one rounding less
+// would let a ray through a corner miss both of its chords.
+func cross(ax, ay, bx, by float64) float64 { return float64(ax*by) - float64(ay*bx) }
 
 // meets reports whether the ray from white along d passes the chord.
 func (c *chord) meets(dx, dy float64) bool {
@@ -92,11 +103,32 @@ func (f *fan) find(dx, dy float64) int {
 	return len(f.chords) - 1
 }
 
+// endMet gives the wavelength of the end of the locus that a ray along d, which
+// meets the purple line, passes within nearEnd of; 0 when it passes neither.
+func (f *fan) endMet(dx, dy, purity float64) float64 {
+	purple := &f.chords[len(f.chords)-1]
+	x, y := dx/purity, dy/purity
+	near := func(ex, ey float64) bool { return (x-ex)*(x-ex)+(y-ey)*(y-ey) <= nearEnd*nearEnd }
+	switch {
+	case near(purple.ax, purple.ay):
+		return purple.nm
+	case near(purple.bx, purple.by):
+		return purple.nm + purple.span
+	}
+	return 0
+}
+
+// sound reports whether p can be a reading of light: finite, x not below 0 and y
+// above it. Whether it is inside the locus is a question of its own.
+func (p XY) sound() bool { return p.X >= 0 && p.Y > 0 && !math.IsInf(p.X+p.Y, 0) }
+
 // DominantOf gives the dominant wavelength and excitation purity of p against a
 // white: the wavelength at which the line from white through p meets the spectral
 // locus; where it meets the purple line, the complementary wavelength, at which
 // the line meets the locus on the other side, with the purity measured to the
 // purple line (CIE 15:2018, 9.4 and 9.5). Purity within rounding above 1 is 1.
+// Light from 699 nm on has 699 nm; the purple line within 0.0001 of an end of the
+// locus counts as that end.
 //
 // Errors wrap analytics.ErrInvalid: p is no chromaticity or lies outside the
 // locus by more than 0.005; the white lies on or outside the locus. They wrap
@@ -105,8 +137,8 @@ func DominantOf(p, white XY) (Dominant, error) {
 	switch {
 	case math.IsNaN(p.X+p.Y) || math.IsInf(p.X+p.Y, 0):
 		return Dominant{}, invalid("x %g, y %g is not finite", p.X, p.Y)
-	case p.Y <= 0 || p.X < 0 || p.X+p.Y > 1:
-		return Dominant{}, invalid("x %g, y %g is no chromaticity: y lies above 0, x not below 0, and they add up to at most 1", p.X, p.Y)
+	case !p.sound():
+		return Dominant{}, invalid("x %g, y %g is no chromaticity: y lies above 0 and x not below 0", p.X, p.Y)
 	}
 	f, err := newFan(white)
 	if err != nil {
@@ -122,16 +154,16 @@ func (f *fan) dominant(p XY) (Dominant, error) {
 		return Dominant{}, notMeaningful("x %.4f, y %.4f is %.4f from white (%.4f, %.4f), too near for a dominant wavelength", p.X, p.Y, away, f.white.X, f.white.Y)
 	}
 	c := &f.chords[f.find(dx, dy)]
-	d := Dominant{ExcitationPurity: c.purity(dx, dy)}
-	d.Boundary = XY{f.white.X + dx/d.ExcitationPurity, f.white.Y + dy/d.ExcitationPurity}
-	if beyond := away - away/d.ExcitationPurity; beyond > outsideLocus {
+	purity := c.purity(dx, dy)
+	d := Dominant{ExcitationPurity: min(1, purity), Boundary: XY{f.white.X + dx/purity, f.white.Y + dy/purity}}
+	if beyond := away - away/purity; beyond > outsideLocus {
 		return Dominant{}, invalid("x %.4f, y %.4f lies %.4f outside the spectral locus: no light has this chromaticity; check the columns and the colorimeter", p.X, p.Y, beyond)
 	}
-	d.ExcitationPurity = min(1, d.ExcitationPurity)
-	if c == &f.chords[len(f.chords)-1] {
+	if c != &f.chords[len(f.chords)-1] {
+		d.WavelengthNM = c.wavelength(dx, dy)
+	} else if d.WavelengthNM = f.endMet(dx, dy, purity); d.WavelengthNM == 0 {
 		d.Complementary = true
-		c, dx, dy = &f.chords[f.find(-dx, -dy)], -dx, -dy
+		d.WavelengthNM = f.chords[f.find(-dx, -dy)].wavelength(-dx, -dy)
 	}
-	d.WavelengthNM = c.wavelength(dx, dy)
 	return d, nil
 }

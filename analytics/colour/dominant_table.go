@@ -67,33 +67,32 @@ func (t *DominantTable) chordOf(dx, dy float64) int {
 	return n - 1
 }
 
+// farAway is farther from any white than a chromaticity can be.
+const farAway = 2
+
 // Wavelengths writes the dominant wavelength in nm of every die to dst, a
-// complementary one negative; NaN where x or y is missing, within 0.001 of white,
-// or outside the locus by more than 0.005. Purities, unless nil, takes the
-// excitation purity. All slices are as long as dst.
+// complementary one negative; NaN where DominantOf gives an error: x or y missing
+// or no chromaticity, within 0.001 of white, or outside the locus by more than
+// 0.005. Purities, unless nil, takes the excitation purity. All slices are as long
+// as dst.
 func (t *DominantTable) Wavelengths(dst, purities, x, y []float64) {
-	white := t.fan.white
-	purple := len(t.fan.chords) - 1
+	white, chords := t.fan.white, t.fan.chords
+	purple := len(chords) - 1
 	x, y = x[:len(dst)], y[:len(dst)]
 	for i := range dst {
 		dx, dy := x[i]-white.X, y[i]-white.Y
 		square := dx*dx + dy*dy
 		wavelength, purity := math.NaN(), math.NaN()
-		if square >= nearWhite*nearWhite { // false for NaN
+		if square >= nearWhite*nearWhite && square < farAway*farAway && x[i] >= 0 && y[i] > 0 { // false for NaN
 			c := t.chordOf(dx, dy)
-			if purity = t.fan.chords[c].purity(dx, dy); purity > 1 {
-				if beyond := 1 - 1/purity; beyond*beyond*square > outsideLocus*outsideLocus {
-					purity = math.NaN()
-				} else {
-					purity = 1
-				}
-			}
+			full := chords[c].purity(dx, dy)
+			beyond := max(0, 1-1/full)
 			switch {
-			case purity != purity:
+			case beyond*beyond*square > outsideLocus*outsideLocus:
 			case c != purple:
-				wavelength = t.fan.chords[c].wavelength(dx, dy)
+				wavelength, purity = chords[c].wavelength(dx, dy), min(1, full)
 			default:
-				wavelength = -t.fan.chords[t.chordOf(-dx, -dy)].wavelength(-dx, -dy)
+				wavelength, purity = t.acrossPurple(dx, dy, full), min(1, full)
 			}
 		}
 		dst[i] = wavelength
@@ -101,4 +100,12 @@ func (t *DominantTable) Wavelengths(dst, purities, x, y []float64) {
 			purities[i] = purity
 		}
 	}
+}
+
+// acrossPurple is the wavelength for a ray that meets the purple line.
+func (t *DominantTable) acrossPurple(dx, dy, purity float64) float64 {
+	if end := t.fan.endMet(dx, dy, purity); end != 0 {
+		return end
+	}
+	return -t.fan.chords[t.chordOf(-dx, -dy)].wavelength(-dx, -dy)
 }
