@@ -56,7 +56,7 @@ func TestCCTAgainstDirectMinimisation(t *testing.T) {
 	for _, kelvin := range []float64{1200, 2000, 2856, 3500, 5000, 6504, 9000, 15000, 19000} {
 		for _, duv := range []float64{-0.03, -0.006, -0.0019, 0, 0.001, 0.0021, 0.01, 0.04} {
 			p, err := XYFromCCT(CCT{kelvin, duv})
-			if err != nil && kelvin < 2500 && duv > 0.002 {
+			if err != nil && kelvin < 3000 && duv > 0.002 {
 				continue // above the locus there is hardly any room for low temperatures
 			}
 			if err != nil {
