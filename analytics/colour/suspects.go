@@ -56,48 +56,76 @@ type DieReadings struct {
 // than 2 % of the dies.
 func CheckDies(in DieReadings) []Suspect {
 	var found []Suspect
-	judge := func(kind SuspectKind, n int, value func(i int) float64, breaks func(v float64) bool, says func(median float64) string, cause string) {
-		var broken []float64
-		of := 0
-		for i := range n {
-			v := value(i)
-			if math.IsNaN(v) {
-				continue
-			}
-			of++
-			if breaks(v) {
-				broken = append(broken, v)
-			}
-		}
-		if of > 0 && float64(len(broken)) > suspectShare*float64(of) {
-			n := len(broken)
-			found = append(found, Suspect{kind, fmt.Sprintf("%s of %s dies: %s", thousands(n), thousands(of), says(median(broken))), cause, n, of})
-		}
+	flux, wavelength, volt, current := in.RadiantFluxMW, in.WavelengthNM, in.ForwardVoltageV, in.CurrentMA
+	const fluxCause = "the unit of flux (µW read as mW), the sphere's calibration factor, or the current setting"
+	if flux != nil && wavelength != nil && current > 0 {
+		found = judge(found, QuantumAboveOne, product{flux, wavelength, 1 / (current * photonEVNM)}, func(v float64) bool { return v > 1 },
+			"more photons come out than electrons go in at %[2]g mA (quantum efficiency %[1].2f)", current, fluxCause)
 	}
-	above := func(v float64) bool { return v > 1 }
-	current := in.CurrentMA
-	if in.RadiantFluxMW != nil && in.WavelengthNM != nil && current > 0 {
-		judge(QuantumAboveOne, len(in.RadiantFluxMW), func(i int) float64 {
-			return ExternalQuantumEfficiency(in.RadiantFluxMW[i], in.WavelengthNM[i], current)
-		}, above, func(m float64) string {
-			return fmt.Sprintf("more photons come out than electrons go in at %g mA (quantum efficiency %.2f)", current, m)
-		}, "the unit of flux (µW read as mW), the sphere's calibration factor, or the current setting")
+	if flux != nil && volt != nil && current > 0 {
+		found = judge(found, WallPlugAboveOne, quotient{flux, volt, 1 / current}, func(v float64) bool { return v > 1 },
+			"more light comes out than power goes in at %[2]g mA (wall-plug efficiency %[1].2f)", current, fluxCause)
 	}
-	if in.RadiantFluxMW != nil && in.ForwardVoltageV != nil && current > 0 {
-		judge(WallPlugAboveOne, len(in.RadiantFluxMW), func(i int) float64 {
-			return WallPlugEfficiency(in.RadiantFluxMW[i], current, in.ForwardVoltageV[i])
-		}, above, func(m float64) string {
-			return fmt.Sprintf("more light comes out than power goes in at %g mA (wall-plug efficiency %.2f)", current, m)
-		}, "the unit of flux (µW read as mW), the sphere's calibration factor, or the current setting")
-	}
-	if in.ForwardVoltageV != nil && in.WavelengthNM != nil {
-		judge(VoltageTooLow, len(in.ForwardVoltageV), func(i int) float64 {
-			return in.ForwardVoltageV[i] * in.WavelengthNM[i] / photonEVNM
-		}, func(v float64) bool { return v < lowVoltage }, func(m float64) string {
-			return fmt.Sprintf("the forward voltage is only %.2f of the photon's energy", m)
-		}, "the unit of voltage (mV read as V), the current setting (a reading at a small test current), or shorted contacts")
+	if volt != nil && wavelength != nil {
+		found = judge(found, VoltageTooLow, product{volt, wavelength, 1 / photonEVNM}, func(v float64) bool { return v < lowVoltage },
+			"the forward voltage is only %[1].2f of the photon's energy", current,
+			"the unit of voltage (mV read as V), the current setting (a reading at a small test current), or shorted contacts")
 	}
 	return found
+}
+
+// product and quotient are a value per die of two readings times a factor.
+type product struct {
+	a, b   []float64
+	factor float64
+}
+
+func (p product) len() int         { return len(p.a) }
+func (p product) at(i int) float64 { return p.a[i] * p.b[i] * p.factor }
+
+type quotient struct {
+	a, b   []float64
+	factor float64
+}
+
+func (q quotient) len() int { return len(q.a) }
+func (q quotient) at(i int) float64 {
+	if !(q.b[i] > 0) {
+		return math.NaN()
+	}
+	return q.a[i] / q.b[i] * q.factor
+}
+
+// judge adds a suspect when more than 2 % of the dies that can be judged break a
+// rule. says takes the median of what they have and the current.
+func judge[V interface {
+	len() int
+	at(i int) float64
+}](found []Suspect, kind SuspectKind, values V, breaks func(v float64) bool, says string, currentMA float64, cause string) []Suspect {
+	of, broken := 0, 0
+	for i := range values.len() {
+		v := values.at(i)
+		if v == v {
+			of++
+		}
+		if breaks(v) { // false for NaN
+			broken++
+		}
+	}
+	if float64(broken) <= suspectShare*float64(of) {
+		return found
+	}
+	those := make([]float64, 0, broken)
+	for i := range values.len() {
+		if v := values.at(i); breaks(v) {
+			those = append(those, v)
+		}
+	}
+	text := fmt.Sprintf(says, median(those), currentMA)
+	if kind == VoltageTooLow {
+		text = fmt.Sprintf(says, median(those))
+	}
+	return append(found, Suspect{kind, fmt.Sprintf("%s of %s dies: %s", thousands(broken), thousands(of), text), cause, broken, of})
 }
 
 // CompareMeasurements looks at two measurements of one wafer: flux that changes by

@@ -82,6 +82,17 @@ func (p *Plane) Value(i int) float64 {
 
 // Floats appends every value to dst (NaN for "no value") and returns it.
 func (p *Plane) Floats(dst []float64) []float64 {
+	if p.Encoding == Int16 && p.Exponent < 0 { // nearly all of them
+		base, divisor := float64(p.BaseK), Pow10(-p.Exponent)
+		for _, k := range p.K16 {
+			v := (base + float64(k)) / divisor // as Scaled: both sums are exact
+			if k == Missing16 {
+				v = math.NaN()
+			}
+			dst = append(dst, v)
+		}
+		return dst
+	}
 	for i, n := 0, p.Len(); i < n; i++ {
 		dst = append(dst, p.Value(i))
 	}

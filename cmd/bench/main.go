@@ -77,8 +77,8 @@ func run(ctx context.Context) (err error) {
 	if b.fixture, err = newFixture(dir, wafers); err != nil {
 		return err
 	}
-	for _, step := range []func(context.Context) error{b.measureColour, b.measurePolygons,
-		b.measureLoad, b.measureRebinning, b.measureDisk, b.measureMoving, b.measureLargeMap} {
+	for _, step := range []func(context.Context) error{b.measureLoad, b.measureRebinning, b.measureDisk, b.measureMoving, b.measureLargeMap,
+		b.measureColour, b.measurePolygons} {
 		if err := step(ctx); err != nil {
 			return err
 		}
