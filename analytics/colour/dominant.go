@@ -134,12 +134,6 @@ func (p XY) sound() bool { return p.X >= 0 && p.Y > 0 && !math.IsInf(p.X+p.Y, 0)
 // locus by more than 0.005; the white lies on or outside the locus. They wrap
 // ErrNotMeaningful where p is within 0.001 of white.
 func DominantOf(p, white XY) (Dominant, error) {
-	switch {
-	case math.IsNaN(p.X+p.Y) || math.IsInf(p.X+p.Y, 0):
-		return Dominant{}, invalid("x %g, y %g is not finite", p.X, p.Y)
-	case !p.sound():
-		return Dominant{}, invalid("x %g, y %g is no chromaticity: y lies above 0 and x not below 0", p.X, p.Y)
-	}
 	f, err := newFan(white)
 	if err != nil {
 		return Dominant{}, err
@@ -148,6 +142,12 @@ func DominantOf(p, white XY) (Dominant, error) {
 }
 
 func (f *fan) dominant(p XY) (Dominant, error) {
+	switch {
+	case math.IsNaN(p.X+p.Y) || math.IsInf(p.X+p.Y, 0):
+		return Dominant{}, invalid("x %g, y %g is not finite", p.X, p.Y)
+	case !p.sound():
+		return Dominant{}, invalid("x %g, y %g is no chromaticity: y lies above 0 and x not below 0", p.X, p.Y)
+	}
 	dx, dy := p.X-f.white.X, p.Y-f.white.Y
 	away := math.Hypot(dx, dy)
 	if away < nearWhite {

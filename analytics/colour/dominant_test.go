@@ -181,7 +181,7 @@ func TestTableIsTheDirectComputation(t *testing.T) {
 			t.Fatal(err)
 		}
 		rng := rand.New(rand.NewPCG(8, 8))
-		const n = 20_000
+		const n = 4000
 		x, y, got, purity := make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)
 		for i := range x {
 			x[i], y[i] = 0.75*rng.Float64(), 0.85*rng.Float64()
