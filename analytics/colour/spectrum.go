@@ -1,9 +1,6 @@
 package colour
 
-import (
-	"math"
-	"sort"
-)
+import "math"
 
 // Spectrum is spectral power over wavelength, in any unit of power per nm. It does
 // not change.
@@ -15,21 +12,24 @@ type Spectrum struct {
 // Limits of a spectrum.
 const (
 	fewestPoints = 5
-	noiseFloor   = 0.02 // of the maximum: how far below 0 noise may reach
+	noiseFloor   = 0.01 // of the maximum: how far below 0 noise may reach
 	openEnd      = 0.01 // of the maximum: more than this at an end is a cut emission
 	coveredFrom  = 380  // a range that reaches from here
 	coveredTo    = 780  // to here is all that CIE 15 asks for, whatever its ends hold
+	longestNM    = 5000 // longer is not in nm; bounds the work of interpolating to 1 nm
+	faintest     = 1e-100
+	strongest    = 1e100 // beyond these, sums would leave the range of numbers
 )
 
 // NewSpectrum takes wavelengths in nm, ascending at any step, and power per nm in
-// any unit. The slices are copied. Noise below 0 down to 2 % of the maximum
+// any unit. The slices are copied. Noise below 0 down to 1 % of the maximum
 // counts as measured; an array spectrometer's dark correction leaves it on both
 // sides of 0, and cutting one side off would shift sums.
 //
 // Errors wrap analytics.ErrInvalid and name the row from 1: fewer than 5 points,
-// values that are not finite, wavelengths out of order or twice, power more below
-// 0 than noise is, no power at all or none between 360 nm and 830 nm, and a range
-// that stops inside the emission.
+// values that are not finite, wavelengths out of order or twice or beyond 5000 nm,
+// power more below 0 than noise is, none at all, none between 360 nm and 830 nm or
+// less than the noise below 0, and a range that stops inside the emission.
 func NewSpectrum(wavelengthNM, power []float64) (*Spectrum, error) {
 	n := len(wavelengthNM)
 	if n != len(power) {
@@ -41,8 +41,8 @@ func NewSpectrum(wavelengthNM, power []float64) (*Spectrum, error) {
 	highest := 0.0
 	for i, nm := range wavelengthNM {
 		switch {
-		case math.IsNaN(nm) || math.IsInf(nm, 0) || nm <= 0:
-			return nil, invalid("row %d: %g is no wavelength in nm", i+1, nm)
+		case !(nm > 0 && nm <= longestNM):
+			return nil, invalid("row %d: %g is no wavelength in nm: they lie above 0 and up to %d", i+1, nm, longestNM)
 		case math.IsNaN(power[i]) || math.IsInf(power[i], 0):
 			return nil, invalid("row %d: power %g at %g nm is not finite", i+1, power[i], nm)
 		case i > 0 && nm == wavelengthNM[i-1]:
@@ -52,8 +52,11 @@ func NewSpectrum(wavelengthNM, power []float64) (*Spectrum, error) {
 		}
 		highest = max(highest, power[i])
 	}
-	if highest == 0 {
+	switch {
+	case highest == 0:
 		return nil, invalid("the spectrum has no power")
+	case highest < faintest || highest > strongest:
+		return nil, invalid("the highest power is %g: no unit of power gives such a number", highest)
 	}
 	for i, p := range power {
 		if p < -noiseFloor*highest {
@@ -61,7 +64,22 @@ func NewSpectrum(wavelengthNM, power []float64) (*Spectrum, error) {
 		}
 	}
 	s := &Spectrum{append([]float64(nil), wavelengthNM...), append([]float64(nil), power...)}
-	return s, s.checkEnds(highest)
+	if err := s.checkEnds(highest); err != nil {
+		return nil, err
+	}
+	return s, s.checkSums()
+}
+
+// checkSums refuses spectra whose colour would be that of noise.
+func (s *Spectrum) checkSums() error {
+	c := s.XYZ()
+	if c == (XYZ{}) {
+		return invalid("the spectrum has no power between %d nm and %d nm, where the eye sees; its highest is at %g nm", firstNM, lastNM, s.RawPeakNM())
+	}
+	if !(c.Y > 0 && c.X+c.Y+c.Z > 0 && s.RadiantFlux() > 0) {
+		return invalid("the power below 0 adds up to more than that above: subtract the right dark reading")
+	}
+	return nil
 }
 
 func (s *Spectrum) checkEnds(highest float64) error {
@@ -85,7 +103,8 @@ func (s *Spectrum) checkEnds(highest float64) error {
 // power; 683 times Y is the luminous quantity. Spectra coarser than 1 nm are
 // first interpolated to 1 nm: with Sprague's fifth-order formula where the step is
 // regular (CIE 15:2018, 7.2.1, and CIE 167:2005), else by a monotone cubic (Fritsch
-// and Carlson, SIAM J. Numer. Anal. 17 (1980) 238). Finer ones are integrated as
+// and Carlson, SIAM J. Numer. Anal. 17 (1980) 238), which also serves lines so narrow
+// for their step that Sprague's would swing below 0. Finer ones are integrated as
 // they are, piecewise linear against the linear observer. Outside its range the
 // spectrum is 0.
 func (s *Spectrum) XYZ() XYZ {
@@ -145,90 +164,4 @@ func (s *Spectrum) CentroidNM() float64 {
 	sum, moment := 0.0, 0.0
 	s.fine().each(func(nm, weighted float64) { sum, moment = sum+weighted, moment+nm*weighted })
 	return moment / sum
-}
-
-// fine is the spectrum at steps of 1 nm or less.
-func (s *Spectrum) fine() *Spectrum {
-	step, regular := s.step()
-	switch {
-	case step <= 1+1e-9:
-		return s
-	case regular && len(s.nm) >= 6:
-		return s.resampled(s.sprague(step))
-	}
-	return s.resampled(s.monotone())
-}
-
-// step is the widest step, and whether all are the same.
-func (s *Spectrum) step() (widest float64, regular bool) {
-	narrowest := math.Inf(1)
-	for i := 1; i < len(s.nm); i++ {
-		widest, narrowest = max(widest, s.nm[i]-s.nm[i-1]), min(narrowest, s.nm[i]-s.nm[i-1])
-	}
-	return widest, widest-narrowest < 1e-6*widest
-}
-
-// resampled takes an interpolation at the spectrum's points and at whole
-// nanometres.
-func (s *Spectrum) resampled(at func(nm float64) float64) *Spectrum {
-	nm, power := s.merged()
-	for i, w := range nm {
-		j := sort.SearchFloat64s(s.nm, w)
-		if j < len(s.nm) && s.nm[j] == w {
-			continue
-		}
-		power[i] = at(w)
-	}
-	return &Spectrum{nm, power}
-}
-
-// sprague interpolates between regular points by Sprague's formula; beyond the
-// ends it takes the two extra points that CIE 15 extrapolates from six.
-func (s *Spectrum) sprague(step float64) func(nm float64) float64 {
-	p, n := s.power, len(s.power)
-	outer := func(a, b, c, d, e, f float64) (near, far float64) {
-		// CIE 15:2018, table of Sprague's end coefficients over 209.
-		near = (508*a - 540*b + 488*c - 367*d + 144*e - 25*f) / 209
-		far = (884*a - 1960*b + 3033*c - 2648*d + 1080*e - 180*f) / 209
-		return near, far
-	}
-	l1, l2 := outer(p[0], p[1], p[2], p[3], p[4], p[5])
-	r1, r2 := outer(p[n-1], p[n-2], p[n-3], p[n-4], p[n-5], p[n-6])
-	ext := append(append([]float64{l2, l1}, p...), r1, r2)
-	return func(nm float64) float64 {
-		at := (nm - s.nm[0]) / step
-		i := max(0, min(n-2, int(at)))
-		x, y := at-float64(i), ext[i:]
-		a0 := y[2]
-		a1 := (2*y[0] - 16*y[1] + 16*y[3] - 2*y[4]) / 24
-		a2 := (-y[0] + 16*y[1] - 30*y[2] + 16*y[3] - y[4]) / 24
-		a3 := (-9*y[0] + 39*y[1] - 70*y[2] + 66*y[3] - 33*y[4] + 7*y[5]) / 24
-		a4 := (13*y[0] - 64*y[1] + 126*y[2] - 124*y[3] + 61*y[4] - 12*y[5]) / 24
-		a5 := (-5*y[0] + 25*y[1] - 50*y[2] + 50*y[3] - 25*y[4] + 5*y[5]) / 24
-		return a0 + x*(a1+x*(a2+x*(a3+x*(a4+x*a5))))
-	}
-}
-
-// monotone interpolates between irregular points by a cubic that neither
-// overshoots nor turns between them.
-func (s *Spectrum) monotone() func(nm float64) float64 {
-	n := len(s.nm)
-	slope, tangent := make([]float64, n-1), make([]float64, n)
-	for i := range slope {
-		slope[i] = (s.power[i+1] - s.power[i]) / (s.nm[i+1] - s.nm[i])
-	}
-	tangent[0], tangent[n-1] = slope[0], slope[n-2]
-	for i := 1; i < n-1; i++ {
-		if a, b := slope[i-1], slope[i]; a*b > 0 { // weighted harmonic mean
-			h0, h1 := s.nm[i]-s.nm[i-1], s.nm[i+1]-s.nm[i]
-			tangent[i] = 3 * (h0 + h1) / ((2*h1+h0)/a + (h1+2*h0)/b)
-		}
-	}
-	return func(nm float64) float64 {
-		i := max(0, min(n-2, sort.SearchFloat64s(s.nm, nm)-1))
-		h := s.nm[i+1] - s.nm[i]
-		t := (nm - s.nm[i]) / h
-		a, b := s.power[i], s.power[i+1]
-		return (1+2*t)*(1-t)*(1-t)*a + t*(1-t)*(1-t)*h*tangent[i] + t*t*(3-2*t)*b + t*t*(t-1)*h*tangent[i+1]
-	}
 }

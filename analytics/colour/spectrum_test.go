@@ -4,15 +4,12 @@ import (
 	"bytes"
 	"encoding/csv"
 	"encoding/json"
-	"errors"
 	"io"
 	"math"
 	"sort"
 	"strconv"
-	"strings"
 	"testing"
 
-	"epitally/analytics"
 	"epitally/testdata/sharedtest"
 )
 
@@ -299,50 +296,4 @@ func TestCoarseSpectraAreInterpolated(t *testing.T) {
 	if got := s.XYZ().XY(); got.distance(want) > 3e-4 {
 		t.Errorf("irregular: %v, want %v", got, want)
 	}
-}
-
-func TestSpectrumRefuses(t *testing.T) {
-	t.Parallel()
-	good := []float64{440, 445, 450, 455, 460, 465}
-	for _, c := range []struct {
-		nm, power []float64
-		want      string
-	}{
-		{good[:3], []float64{0, 1, 0}, "3 points"},
-		{good, []float64{0, 1, 0}, "6 wavelengths for 3 powers"},
-		{good, []float64{0, 0.5, 1, math.NaN(), 0.5, 0}, "row 4: power NaN at 455 nm"},
-		{good, []float64{0, 0.5, 1, -0.5, 0.5, 0}, "row 4: power -0.5 at 455 nm is below 0"},
-		{good, []float64{0, 0, 0, 0, 0, 0}, "no power"},
-		{good, []float64{0, 0, 0, 0.5, 1, 0.9}, "ends at 465 nm, where the power is still 90 %"},
-		{good, []float64{0.3, 0.5, 1, 0.5, 0.1, 0}, "begins at 440 nm"},
-		{[]float64{440, 445, 445, 455, 460, 465}, []float64{0, 0.5, 1, 0.5, 0.1, 0}, "row 3: wavelength 445 nm stands twice"},
-		{[]float64{440, 450, 445, 455, 460, 465}, []float64{0, 0.5, 1, 0.5, 0.1, 0}, "row 3: wavelength 445 nm does not follow 450 nm"},
-		{[]float64{0.44, 0.45, 0.46, 0.47, 0.48, 0.49}, []float64{0, 0.5, 1, 0.5, 0.1, 0}, "wavelengths are in nm"},
-		{[]float64{math.Inf(-1), 445, 450, 455, 460, 465}, []float64{0, 0.5, 1, 0.5, 0.1, 0}, "row 1: -Inf is no wavelength"},
-	} {
-		_, err := NewSpectrum(c.nm, c.power)
-		if !errors.Is(err, analytics.ErrInvalid) || !strings.Contains(err.Error(), c.want) {
-			t.Errorf("%v %v gives %v, want %q", c.nm, c.power, err, c.want)
-		}
-	}
-	if _, err := NewSpectrum(good, []float64{-0.01, 0.5, 1, 0.5, -0.01, 0}); err != nil {
-		t.Errorf("noise about 0: %v", err)
-	}
-}
-
-func FuzzSpectrum(f *testing.F) {
-	f.Add(440.0, 5.0, 0.0, 0.5, 1.0, 0.4, 0.0)
-	f.Fuzz(func(t *testing.T, from, step, a, b, c, d, e float64) {
-		s, err := NewSpectrum([]float64{from, from + step, from + 2*step, from + 3*step, from + 4*step}, []float64{a, b, c, d, e})
-		if err != nil || step > 1000 {
-			return
-		}
-		if math.IsNaN(s.PeakNM()) || math.IsNaN(s.CentroidNM()) && s.RadiantFlux() != 0 && !math.IsInf(s.RadiantFlux(), 0) {
-			t.Errorf("peak %g, centroid %g", s.PeakNM(), s.CentroidNM())
-		}
-		p := s.XYZ().XY()
-		if d, err := DominantOf(p, WhiteE); err == nil && (math.IsNaN(d.WavelengthNM) || !(d.ExcitationPurity >= 0 && d.ExcitationPurity <= 1)) {
-			t.Errorf("%+v", d)
-		}
-	})
 }
