@@ -172,7 +172,7 @@ func closestCorners(a, b *RegionCell) (p, q point, far float64) {
 func (r *Region) hidden() (found []Finding) {
 	seen := make([]bool, len(r.Cells))
 	for _, code := range r.raster.codes {
-		if code != 0 && code != mixedSquare {
+		if code != 0 && code < guardSquare {
 			seen[code-1] = true
 		}
 	}

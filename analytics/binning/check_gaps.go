@@ -35,7 +35,7 @@ func (r *Region) covered() []bool {
 	g := r.raster
 	out := make([]bool, len(g.codes))
 	for i, code := range g.codes {
-		if out[i] = code != 0; code == mixedSquare {
+		if out[i] = code != 0; code == mixedSquare { // in a guard band is covered
 			out[i] = r.classify(g.middle(i), g.candidatesOf(i)) != outsideCells
 		}
 	}

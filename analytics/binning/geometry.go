@@ -87,6 +87,18 @@ func (m metric) near(rings []ring, p point, width float64) bool {
 	return false
 }
 
+// distance is that from p to the nearest edge of the rings.
+func (m metric) distance(rings []ring, p point) float64 {
+	nearest := math.Inf(1)
+	p = m.apply(p)
+	for _, r := range rings {
+		for i, j := 0, len(r)-1; i < len(r); j, i = i, i+1 {
+			nearest = min(nearest, squareDistance(m.apply(r[j]), m.apply(r[i]), p))
+		}
+	}
+	return math.Sqrt(nearest)
+}
+
 // squareDistance is that from p to the edge a–b.
 func squareDistance(a, b, p point) float64 {
 	dx, dy := b.x-a.x, b.y-a.y

@@ -22,14 +22,17 @@ type raster struct {
 // all lie over one another reach it; then every cell is asked.
 const mostCandidates = 1 << 22
 
-const mixedSquare = math.MaxUint16
+// Codes besides cells.
+const (
+	mixedSquare = math.MaxUint16     // an outline, or the end of the guard band, passes through
+	guardSquare = math.MaxUint16 - 1 // all of it is in the guard band
+)
 
 func newRaster(r *Region) *raster {
 	whole := emptyBox()
 	for i := range r.Cells {
 		whole = whole.join(r.Cells[i].box)
 	}
-	gx, gy := r.guardReach(whole)
 	margin := 1e-9
 	whole = whole.grown(margin, margin)
 	g := &raster{low: whole.low, codes: make([]uint16, rasterSide*rasterSide)}
@@ -44,12 +47,15 @@ func newRaster(r *Region) *raster {
 				slack += 1e-4 * max(b.high.x-b.low.x, b.high.y-b.low.y)
 			}
 			for _, e := range edgesOf(s.rings) {
-				g.mark(e[0], e[1], gx+slack, gy+slack)
+				g.mark(e[0], e[1], slack)
 			}
 		}
 	}
-	g.list(r)
 	g.fill(r)
+	if r.Guard > 0 {
+		g.fillGuard(r, whole)
+	}
+	g.list(r)
 	return g
 }
 
@@ -64,8 +70,13 @@ func (g *raster) rows(from, to float64) (first, last int) {
 
 func (g *raster) clamp(at float64) int { return int(max(0, min(rasterSide-1, at))) }
 
-// mark calls mixed every square within reach of the edge a–b, row by row.
-func (g *raster) mark(a, b point, reachX, reachY float64) {
+// mark calls mixed every square within reach of the edge a–b.
+func (g *raster) mark(a, b point, reach float64) {
+	g.along(a, b, reach, reach, func(square int) { g.codes[square] = mixedSquare })
+}
+
+// along visits every square within reach of the edge a–b, row by row.
+func (g *raster) along(a, b point, reachX, reachY float64, visit func(square int)) {
 	if a.y > b.y {
 		a, b = b, a
 	}
@@ -81,7 +92,7 @@ func (g *raster) mark(a, b point, reachX, reachY float64) {
 		}
 		from, to := g.columns(min(x1, x2)-reachX, max(x1, x2)+reachX)
 		for i := row*rasterSide + from; i <= row*rasterSide+to; i++ {
-			g.codes[i] = mixedSquare
+			visit(i)
 		}
 	}
 }
@@ -150,11 +161,58 @@ func (g *raster) fill(r *Region) {
 			}
 			if !known {
 				x := g.low.x + (float64(col)+0.5)/g.perX
-				code, known = uint16(r.classify(point{x, y}, r.order)+1), true
+				code, known = uint16(r.holder(point{x, y}, r.order)+1), true
 			}
 			g.codes[i] = code
 		}
 	}
+}
+
+// fillGuard looks at the squares within reach of the guard of some outline that no
+// outline passes through: each lies in one cell, and as a rule wholly in the
+// cell's guard band or wholly out of it.
+func (g *raster) fillGuard(r *Region, whole box) {
+	reachX, reachY := r.guardReach(whole)
+	seen := make([]bool, len(g.codes))
+	half := point{0.5 / g.perX, 0.5 / g.perY}
+	for _, cell := range r.order {
+		for j := range r.Cells[cell].Shapes {
+			for _, e := range edgesOf(r.Cells[cell].Shapes[j].rings) {
+				g.along(e[0], e[1], reachX, reachY, func(square int) {
+					code := g.codes[square]
+					if seen[square] || code == mixedSquare || code == 0 {
+						return
+					}
+					seen[square] = true
+					g.codes[square] = r.guardCode(int(code)-1, g.middle(square), half)
+				})
+			}
+		}
+	}
+}
+
+// guardCode is the code of a square about p that lies in a cell.
+func (r *Region) guardCode(cell int, p, half point) uint16 {
+	m := r.metricAt(p)
+	a, b := m.apply(half), m.apply(point{half.x, -half.y})
+	// The metric itself changes by far less than 1 % over a square.
+	spread := 1.01 * max(math.Hypot(a.x, a.y), math.Hypot(b.x, b.y))
+	always := true
+	for j := range r.Cells[cell].Shapes {
+		s := &r.Cells[cell].Shapes[j]
+		if !s.holds(p, r.Space) {
+			continue
+		}
+		distance := m.distance(s.rough, p)
+		if distance-spread > 1.01*r.Guard {
+			return uint16(cell + 1)
+		}
+		always = always && distance+spread < 0.99*r.Guard
+	}
+	if always {
+		return guardSquare
+	}
+	return mixedSquare
 }
 
 // at is the cell at p, outsideCells or inGuard; not a number is outside.
@@ -164,10 +222,14 @@ func (g *raster) at(r *Region, p point) int {
 		return outsideCells
 	}
 	square := int(fy)*rasterSide + int(fx)
-	if code := g.codes[square]; code != mixedSquare {
+	switch code := g.codes[square]; code {
+	case mixedSquare:
+		return r.classify(p, g.candidatesOf(square))
+	case guardSquare:
+		return inGuard
+	default:
 		return int(code) - 1
 	}
-	return r.classify(p, g.candidatesOf(square))
 }
 
 func (g *raster) candidatesOf(square int) []int {

@@ -139,20 +139,21 @@ const (
 // cell holds but that lies on an outline belongs to the first cell it bounds: the
 // outer edge of the whole is closed.
 func (r *Region) classify(p point, candidates []int) int {
-	found := outsideCells
-	for _, i := range candidates {
-		if r.Cells[i].holds(p, r.Space) {
-			found = i
-			break
-		}
-	}
-	if found == outsideCells {
-		found = r.boundedAt(p, candidates)
-	}
+	found := r.holder(p, candidates)
 	if found >= 0 && r.Guard > 0 && r.nearOutline(found, p) {
 		return inGuard
 	}
 	return found
+}
+
+// holder is classify without the guard.
+func (r *Region) holder(p point, candidates []int) int {
+	for _, i := range candidates {
+		if r.Cells[i].holds(p, r.Space) {
+			return i
+		}
+	}
+	return r.boundedAt(p, candidates)
 }
 
 func (r *Region) boundedAt(p point, candidates []int) int {
@@ -175,7 +176,7 @@ func (r *Region) nearOutline(cell int, p point) bool {
 	m := r.metricAt(p)
 	for j := range r.Cells[cell].Shapes {
 		s := &r.Cells[cell].Shapes[j]
-		if s.holds(p, r.Space) && !m.near(s.rings, p, r.Guard) {
+		if s.holds(p, r.Space) && !m.near(s.rough, p, r.Guard) {
 			return false
 		}
 	}

@@ -252,3 +252,38 @@ func TestCellsOverOneAnother(t *testing.T) {
 		t.Errorf("one cell more: %v", err)
 	}
 }
+
+// TestGuardedRasterAgrees is TestRasterAgreesWithTheCells for circles, overlapping
+// cells, u′, v′ and a guard in uncertainties that lean.
+func TestGuardedRasterAgrees(t *testing.T) {
+	t.Parallel()
+	const cells = `
+    cells:
+      - {name: K, priority: 1, circle: {centre: [%s], steps: 6}}
+      - name: A
+        polygon: [[%s], [%s], [%s], [%s]]
+      - {name: B, any_of: [{polygon: [[%[3]s], [%[6]s], [%[4]s]]}, {circle: {centre: [%[6]s], steps: 4}}]}
+`
+	xy := fmt.Sprintf(cells, "0.335, 0.335", "0.31, 0.31", "0.35, 0.31", "0.35, 0.35", "0.31, 0.35", "0.37, 0.33")
+	uv := fmt.Sprintf(cells, "0.21, 0.48", "0.20, 0.47", "0.22, 0.47", "0.22, 0.49", "0.20, 0.49", "0.235, 0.48")
+	for name, region := range map[string]string{
+		"width": "{}guard: 0.001" + xy, "uncertainties": "{}guard: 1.645 u" + xy, "uv": "{}space: uv\n    guard: 2 u" + uv,
+	} {
+		s := mustParse(t, "specification: g\nkind: probe\nuncertainty: {cie_x: 0.0008, cie_y: 0.0015}\nregions:\n  - region: C\n"+strings.Replace(region, "{}", "    ", 1))
+		r := s.regions[0]
+		low, high := r.raster.low, point{r.raster.low.x + rasterSide/r.raster.perX, r.raster.low.y + rasterSide/r.raster.perY}
+		rng := rand.New(rand.NewPCG(4, 4))
+		found := map[int]int{}
+		for range 60_000 {
+			p := point{low.x + (high.x-low.x)*rng.Float64(), low.y + (high.y-low.y)*rng.Float64()}
+			got, want := r.raster.at(r, p), r.classify(p, r.order)
+			if got != want {
+				t.Fatalf("%s: (%v, %v) is in cell %d by raster, %d directly", name, p.x, p.y, got, want)
+			}
+			found[got]++
+		}
+		if found[0] < 300 || found[1] < 1000 || found[2] < 1000 || found[inGuard] < 1000 {
+			t.Errorf("%s: the points hardly test it: %v", name, found)
+		}
+	}
+}

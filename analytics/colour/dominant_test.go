@@ -45,6 +45,7 @@ func eachCheck(t *testing.T, file, op string, solve func(t *testing.T, input jso
 			}
 			g, have := got[key]
 			if !ok || !have {
+				t.Errorf("%s: %s, %v, is not held against anything", c.ID, key, want)
 				continue
 			}
 			if tol := toleranceOf(c.Tol, key, w); !(math.Abs(g-w) <= tol) {

@@ -53,7 +53,7 @@ func (b *bench) measureRebinning(ctx context.Context) error {
 		return err
 	}
 	dies := 0
-	ours, err := best(60, func() (time.Duration, error) {
+	ours, err := best(120, func() (time.Duration, error) {
 		start := time.Now()
 		n, err := b.rebin(ctx, spec, ids)
 		dies = n
