@@ -34,7 +34,7 @@ func ExampleDominantTable_Wavelengths() {
 	table.Wavelengths(nm, purity, x, y)
 	fmt.Printf("%.2f %.3f\n", nm, purity)
 	// Output:
-	// [455.00 -523.96 NaN] [0.800 0.621 NaN]
+	// [455.00 -521.12 NaN] [0.800 0.645 NaN]
 }
 
 // A blue line at 5 nm steps.
@@ -57,8 +57,8 @@ func ExampleNewSpectrum() {
 	_, err = colour.NewSpectrum([]float64{430, 440, 435, 450, 460}, []float64{0, 1, 1, 1, 0})
 	fmt.Println(err)
 	// Output:
-	// peak 454.9 nm, centroid 455.1 nm, width 15.1 nm
-	// x 0.1499, y 0.0251, 35.1 lm/W
+	// peak 454.8 nm, centroid 455.4 nm, width 14.9 nm
+	// x 0.1498, y 0.0246, 34.5 lm/W
 	// row 3: wavelength 435 nm does not follow 440 nm; sort the rows by wavelength: invalid input
 }
 
@@ -86,7 +86,7 @@ func ExampleQuadrangleSteps() {
 	}
 	// Output:
 	// [{0.4003 0.4035} {0.3737 0.3880} {0.3671 0.3583} {0.3895 0.3709}] <nil>
-	// [{0.3924 0.3928} {0.3769 0.3839} {0.3730 0.3666} {0.3861 0.3743}] <nil>
+	// [{0.3918 0.3930} {0.3772 0.3845} {0.3730 0.3672} {0.3863 0.3747}] <nil>
 }
 
 // How far a lamp is from its target, in steps of CIE TN 001.
