@@ -53,9 +53,12 @@ func (s *Server) calcColour(c echo.Context, _ noParams) error {
 
 func (in *colourIn) question() (q colour.Question, err error) {
 	q.RadiantFluxMW, q.CurrentMA, q.VoltageV = orNaN(in.RadiantFluxMW), orNaN(in.CurrentMA), orNaN(in.ForwardVoltageV)
-	for name, v := range map[string]float64{"radiant_flux_mw": q.RadiantFluxMW, "current_ma": q.CurrentMA, "forward_voltage_v": q.VoltageV} {
-		if v < 0 {
-			return q, fmt.Errorf("%s %g: give a number not below 0: %w", name, v, analytics.ErrInvalid)
+	for _, v := range []struct {
+		name  string
+		value float64
+	}{{"radiant_flux_mw", q.RadiantFluxMW}, {"current_ma", q.CurrentMA}, {"forward_voltage_v", q.VoltageV}} {
+		if v.value < 0 {
+			return q, fmt.Errorf("%s %g: give a number not below 0: %w", v.name, v.value, analytics.ErrInvalid)
 		}
 	}
 	if q.White, err = in.white(); err != nil {
@@ -65,12 +68,20 @@ func (in *colourIn) question() (q colour.Question, err error) {
 	switch {
 	case (in.Spectrum != nil) == byXY && byXY == byPeak, in.Spectrum != nil && (byXY || byPeak), byXY && byPeak:
 		return q, fmt.Errorf("give one of spectrum, cie_x with cie_y, and peak_wavelength_nm with fwhm_nm: %w", analytics.ErrInvalid)
+	case in.Model != "" && !byPeak:
+		return q, fmt.Errorf("model %q is for peak_wavelength_nm with fwhm_nm: %w", in.Model, analytics.ErrInvalid)
+	case byXY && (in.CIEX == nil || in.CIEY == nil):
+		return q, fmt.Errorf("cie_x and cie_y go together: %w", analytics.ErrInvalid)
+	case byPeak && (in.PeakWavelengthNM == nil || in.FWHMNM == nil):
+		return q, fmt.Errorf("peak_wavelength_nm and fwhm_nm go together: %w", analytics.ErrInvalid)
 	case in.Spectrum != nil:
-		q.Spectrum, err = colour.NewSpectrum(in.Spectrum.WavelengthNM, in.Spectrum.Value)
+		if q.Spectrum, err = colour.NewSpectrum(in.Spectrum.WavelengthNM, in.Spectrum.Value); err != nil {
+			err = fmt.Errorf("spectrum: %w", err)
+		}
 	case byXY:
-		q.XY = &colour.XY{X: orNaN(in.CIEX), Y: orNaN(in.CIEY)}
+		q.XY = &colour.XY{X: *in.CIEX, Y: *in.CIEY}
 	default:
-		q.Peak = &colour.PeakQuestion{PeakNM: orNaN(in.PeakWavelengthNM), FWHMNM: orNaN(in.FWHMNM)}
+		q.Peak = &colour.PeakQuestion{PeakNM: *in.PeakWavelengthNM, FWHMNM: *in.FWHMNM}
 		if q.Peak.Model = colour.DefaultLineModel(q.Peak.PeakNM); in.Model != "" {
 			q.Peak.Model, err = colour.LineModelByName(in.Model)
 		}
@@ -88,8 +99,8 @@ func (in *colourIn) white() (colour.XY, error) {
 			return w, nil
 		}
 	}
-	var p [2]float64
-	if json.Unmarshal(in.White, &p) == nil {
+	var p []float64
+	if json.Unmarshal(in.White, &p) == nil && len(p) == 2 {
 		return colour.XY{X: p[0], Y: p[1]}, nil
 	}
 	return colour.XY{}, fmt.Errorf(`white %s: use "E", "D65", "A" or [x, y]: %w`, in.White, analytics.ErrInvalid)

@@ -53,6 +53,9 @@ type Answer struct {
 // peak and width. Errors are those of the parts and wrap analytics.ErrInvalid.
 func Describe(q Question) (Answer, error) {
 	a := Answer{Notes: []string{}, Suspects: []Suspect{}}
+	if q.Spectrum == nil && q.XY == nil && q.Peak == nil {
+		return a, invalid("neither a spectrum, a chromaticity nor a peak is given")
+	}
 	s := q.Spectrum
 	if p := q.Peak; p != nil {
 		if err := p.Model.Check(); err != nil {
@@ -83,6 +86,9 @@ func Describe(q Question) (Answer, error) {
 		}
 	}
 	a.efficiencies(q, wavelength)
+	if s == nil && a.ExternalQuantumEfficiency != nil {
+		a.Notes = append(a.Notes, "photon energy and external quantum efficiency take the dominant wavelength for that of the photons")
+	}
 	return a, nil
 }
 

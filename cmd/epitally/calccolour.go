@@ -31,6 +31,7 @@ func calcColour(_ context.Context, c *console, args []string) error {
 	o := colourOptions{}
 	f := pflag.NewFlagSet("calc colour", pflag.ContinueOnError)
 	f.SortFlags = false
+	f.SetOutput(c.err)
 	f.StringVar(&o.spectrum, "spectrum", "", "CSV `file` of wavelength in nm and power, with or without a header; - for standard input")
 	f.StringVar(&o.xy, "xy", "", "chromaticity `X,Y` (CIE 1931)")
 	f.Float64Var(&o.peak, "peak", math.NaN(), "peak wavelength in `nm`, with --fwhm")
@@ -41,8 +42,17 @@ func calcColour(_ context.Context, c *console, args []string) error {
 	f.Float64Var(&o.current, "current", math.NaN(), "drive current in `mA`")
 	f.Float64Var(&o.voltage, "voltage", math.NaN(), "forward voltage in `V`")
 	f.BoolVar(&o.json, "json", false, "print JSON")
+	numbers := []string{"peak", "fwhm", "radiant-flux", "current", "voltage"}
+	for _, name := range numbers {
+		f.Lookup(name).DefValue = "0" // help names no default: NaN is "not given"
+	}
 	if err := f.Parse(args); err != nil {
 		return err
+	}
+	for _, name := range numbers {
+		if text := f.Lookup(name).Value.String(); f.Changed(name) && text == "NaN" {
+			return fmt.Errorf("--%s %s: give a number, or leave the flag out", name, text)
+		}
 	}
 	if f.NArg() > 0 {
 		return fmt.Errorf("calc colour: %q is not a flag; see calc colour --help", f.Arg(0))
@@ -88,6 +98,8 @@ func (o colourOptions) question(stdin io.Reader) (q colour.Question, err error) 
 		return q, errors.New("calc colour: give one of --spectrum FILE, --xy X,Y and --peak P --fwhm F")
 	case o.model != "" && !byPeak:
 		return q, errors.New("calc colour: --model is for --peak and --fwhm")
+	case byPeak && math.IsNaN(o.peak+o.fwhm):
+		return q, errors.New("calc colour: --peak and --fwhm go together")
 	case o.spectrum != "":
 		q.Spectrum, err = readSpectrum(stdin, o.spectrum)
 	case o.xy != "":

@@ -3,12 +3,15 @@ package main
 import (
 	"bytes"
 	"encoding/json"
+	"errors"
 	"fmt"
 	"math"
 	"os"
 	"path/filepath"
 	"strings"
 	"testing"
+
+	"github.com/spf13/pflag"
 
 	"epitally/analytics/colour"
 	"epitally/jobs/reader"
@@ -76,7 +79,11 @@ func TestCalcColourRefuses(t *testing.T) {
 		{"--xy 0.3,0", "", "y lies above 0"},
 		{"--xy 0.3,NaN", "", "not finite"},
 		{"--peak 450 --fwhm 20 --model bell", "", "use gaussian, ohno"},
-		{"--peak 450", "", "full width at half maximum"},
+		{"--peak 450", "", "--peak and --fwhm go together"},
+		{"--peak 450 --fwhm 0", "", "full width at half maximum"},
+		{"--peak 450 --fwhm 20 --current NaN", "", "--current NaN: give a number"},
+		{"--xy 0.3,0.3 --voltage +Inf", "", "--voltage +Inf"},
+		{"--spectrum -", "440,0\n450,1\n460,0\n470,0\n1e9,0\n", "row 5: 1e+09 is no wavelength in nm"},
 		{"--xy 0.3,0.3 --model ohno", "", "--model is for --peak"},
 		{"--xy 0.3,0.3 --white pink", "", "is not E, D65, A or X,Y"},
 		{"--xy 0.3,0.3 --white 0.05,0.05", "", "on or outside the spectral locus"},
@@ -92,6 +99,42 @@ func TestCalcColourRefuses(t *testing.T) {
 		if err == nil || !strings.Contains(err.Error(), c.want) {
 			t.Errorf("%s: %v, want %q\n%s", c.args, err, c.want, out)
 		}
+	}
+}
+
+// Deep red as it is printed is red, and a deep-red line's x + y of 1 and a bit in the
+// last place is no reason to refuse it.
+func TestCalcColourOfDeepRed(t *testing.T) {
+	t.Parallel()
+	for _, args := range []string{"--xy 0.7347,0.2653", "--peak 697 --fwhm 5", "--peak 740 --fwhm 25 --model gaussian"} {
+		out, err := calcColourOf(t, "", append(strings.Fields(args), "--json")...)
+		if err != nil {
+			t.Errorf("%s: %v", args, err)
+			continue
+		}
+		var got colour.Answer
+		if err := json.Unmarshal([]byte(out), &got); err != nil {
+			t.Fatal(err)
+		}
+		if *got.Complementary || *got.DominantWavelengthNM < 680 || *got.DominantWavelengthNM > 700 {
+			t.Errorf("%s: %g nm, complementary %t", args, *got.DominantWavelengthNM, *got.Complementary)
+		}
+	}
+}
+
+func TestCalcColourHelpNamesUnits(t *testing.T) {
+	t.Parallel()
+	_, help, err := runCommand(t, "calc", "colour", "--help")
+	if !errors.Is(err, pflag.ErrHelp) {
+		t.Fatal(err)
+	}
+	for _, want := range []string{"radiant flux in mW", "drive current in mA", "forward voltage in V", "wavelength in nm"} {
+		if !strings.Contains(help, want) {
+			t.Errorf("help lacks %q:\n%s", want, help)
+		}
+	}
+	if strings.Contains(help, "NaN") {
+		t.Errorf("help speaks of NaN:\n%s", help)
 	}
 }
 
