@@ -319,7 +319,10 @@ func (f *frame) cornerHandles(r *binning.Region) {
 		}
 	}
 	for _, k := range corners {
-		f.handle(fmt.Sprintf(`circle cx="%s" cy="%s" r="7"`, at(f.x(k.at[0])), at(f.y(k.at[1]))),
+		f.put(`<circle class="corner" cx="%s" cy="%s" r="6"/>`, at(f.x(k.at[0])), at(f.y(k.at[1])))
+	}
+	for _, k := range corners { // wider than they look, for fingers
+		f.handle(fmt.Sprintf(`circle cx="%s" cy="%s" r="16"`, at(f.x(k.at[0])), at(f.y(k.at[1]))),
 			fmt.Sprintf("corner of %s at (%g, %g)", strings.Join(k.names, ", "), k.at[0], k.at[1]), k.moves)
 	}
 }

@@ -373,3 +373,32 @@ func TestTablesGiveWay(t *testing.T) {
 		}
 	}
 }
+
+// Counting only, out of stored lanes, must count what binning writes down, with
+// and without dies that do not count.
+func TestCountingOnlyCountsTheIncludedDies(t *testing.T) {
+	t.Parallel()
+	const dies = 5003
+	s := mustParse(t, threeQuantities)
+	planes := PickPlanes(s, benchWafer(dies, 3))
+	var lanes []Lanes
+	for _, p := range planes {
+		lanes = append(lanes, lanesOf(p))
+	}
+	ragged := make([]bool, dies)
+	for i := range ragged {
+		ragged[i] = i%71 > 5 && i%13 != 0
+	}
+	for name, include := range map[string][]bool{"all": nil, "some": ragged, "none": make([]bool, dies)} {
+		codes, want, got := make([]uint16, dies), make([]int, len(s.Cells())), make([]int, len(s.Cells()))
+		if err := s.Bin(codes, want, planes, include); err != nil {
+			t.Fatal(err)
+		}
+		if err := s.NewBinner().BinLanes(nil, got, lanes, include); err != nil {
+			t.Fatal(err)
+		}
+		if !slices.Equal(got, want) {
+			t.Errorf("%s: %v, want %v", name, got, want)
+		}
+	}
+}

@@ -227,8 +227,8 @@ func (b *Binner) run(dst []uint16, counts []int, include []bool) error {
 		return err
 	}
 	clear(counts)
-	if dst == nil && include == nil && b.threeLanes() {
-		b.countThree(counts)
+	if dst == nil && b.threeLanes() {
+		b.countThree(counts, include, dies)
 		return nil
 	}
 	untested := len(b.spec.cells) - 1

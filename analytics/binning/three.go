@@ -18,16 +18,25 @@ func (b *Binner) threeLanes() bool {
 // countThree counts the dies per code without writing a code down: join, settle
 // and count in one pass. Neighbours mostly share a bin, so every other die has
 // counts of its own and does not wait for the last one's to be written.
-func (b *Binner) countThree(counts []int) {
-	x, y, z := &b.columns[0], &b.columns[1], &b.columns[2]
-	tx, ty, tz := &x.table.verdicts, &y.table.verdicts, &z.table.verdicts
-	n := len(x.lo)
-	xl, xh, yl, yh, zl, zh := x.lo, x.hi[:n], y.lo[:n], y.hi[:n], z.lo[:n], z.hi[:n]
+// Only dies that are included count; include nil includes all.
+func (b *Binner) countThree(counts []int, include []bool, dies int) {
 	if cap(b.odd) < len(counts) {
 		b.odd = make([]int, len(counts))
 	}
 	odd := b.odd[:len(counts)]
 	clear(odd)
+	eachRun(include, dies, func(from, to int) { b.countRun(counts, odd, from, to) })
+	for c, n := range odd {
+		counts[c] += n
+	}
+}
+
+func (b *Binner) countRun(counts, odd []int, from, to int) {
+	x, y, z := &b.columns[0], &b.columns[1], &b.columns[2]
+	tx, ty, tz := &x.table.verdicts, &y.table.verdicts, &z.table.verdicts
+	xl := x.lo[from:to]
+	n := len(xl)
+	xh, yl, yh, zl, zh := x.hi[from:to][:n], y.lo[from:to][:n], y.hi[from:to][:n], z.lo[from:to][:n], z.hi[from:to][:n]
 	i := 0
 	for ; i+1 < len(xl); i += 2 {
 		counts[code(tx[pair(xl[i], xh[i])], ty[pair(yl[i], yh[i])], tz[pair(zl[i], zh[i])])]++
@@ -36,8 +45,25 @@ func (b *Binner) countThree(counts []int) {
 	if i < len(xl) {
 		counts[code(tx[pair(xl[i], xh[i])], ty[pair(yl[i], yh[i])], tz[pair(zl[i], zh[i])])]++
 	}
-	for c, n := range odd {
-		counts[c] += n
+}
+
+// eachRun visits the runs of dies that are included; nil includes all.
+func eachRun(include []bool, dies int, visit func(from, to int)) {
+	if include == nil {
+		visit(0, dies)
+		return
+	}
+	for from := 0; from < dies; {
+		if !include[from] {
+			from++
+			continue
+		}
+		to := from + 1
+		for to < dies && include[to] {
+			to++
+		}
+		visit(from, to)
+		from = to
 	}
 }
 
