@@ -203,7 +203,8 @@ func (r *Region) guardCode(cell int, p, half point) uint16 {
 		if !s.holds(p, r.Space) {
 			continue
 		}
-		distance := m.distance(s.rough, p)
+		distance, off := m.distance(s.rough, p), m.apply(s.off)
+		spread := spread + math.Abs(off.x) + math.Abs(off.y)
 		if distance-spread > 1.01*r.Guard {
 			return uint16(cell + 1)
 		}
