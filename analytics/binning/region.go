@@ -53,7 +53,8 @@ type Shape struct {
 	NominalK int        // of a quadrangle
 
 	rings  []ring
-	rough  []ring    // the same with fewer points, for integrals
+	rough  []ring    // the same with fewer points, for distances and integrals
+	off    point     // how far rough is off at most
 	centre colour.UV // of a circle
 }
 
