@@ -66,6 +66,9 @@ func Describe(q Question) (Answer, error) {
 			return a, err
 		}
 		a.Model = p.Model.Describe()
+		if p.Model.FittedTo != "" && (p.PeakNM < LowestDefaultNM || p.PeakNM > HighestDefaultNM) {
+			a.Notes = append(a.Notes, fmt.Sprintf("the line model was fitted to peaks from %d nm to %d nm: here its tails decide, which nobody has measured", LowestDefaultNM, HighestDefaultNM))
+		}
 	}
 	xy := q.XY
 	if s != nil {

@@ -73,6 +73,14 @@ var measuredLines = []struct {
 	{math.Inf(1), LineModel{Name: "split-pearson", Ratio: 0.695, ShortTail: 2.1, LongTail: 1.66, ResidualNM: 0.62, FittedTo: "7 measured amber and red LEDs"}},
 }
 
+// Range of peaks that the default lines are for, in nm: what they were fitted to and
+// some 15 nm more. Beyond, the tails of the nearest line would decide, which nobody
+// has measured.
+const (
+	LowestDefaultNM  = 420
+	HighestDefaultNM = 680
+)
+
 // DefaultLineModel is the line fitted to measured LEDs of the peak's colour.
 func DefaultLineModel(peakNM float64) LineModel {
 	for _, m := range measuredLines {

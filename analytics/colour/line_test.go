@@ -203,6 +203,27 @@ func TestPeakTableAgainstTheDirectComputation(t *testing.T) {
 	}
 }
 
+// Where no LED was measured there is no default: infrared wafers get no invented
+// dominant wavelength, and the calculator says what its answer rests on.
+func TestNoDefaultLineBeyondWhatWasMeasured(t *testing.T) {
+	t.Parallel()
+	nan := math.NaN()
+	if m := DefaultPeakModel([]float64{740, 741, nan, nan}); m != nil {
+		t.Errorf("740 nm: %+v", m)
+	}
+	if m := DefaultPeakModel([]float64{625, 626, nan, 740}); m == nil {
+		t.Error("625 nm has no default line")
+	}
+	far, err := Describe(Question{Peak: &PeakQuestion{740, 25, DefaultLineModel(740)}, White: WhiteE, RadiantFluxMW: nan, CurrentMA: nan, VoltageV: nan})
+	if err != nil || !strings.Contains(strings.Join(far.Notes, " "), "nobody has measured") {
+		t.Errorf("%v: %v", err, far.Notes)
+	}
+	near, err := Describe(Question{Peak: &PeakQuestion{625, 17, DefaultLineModel(625)}, White: WhiteE, RadiantFluxMW: nan, CurrentMA: nan, VoltageV: nan})
+	if err != nil || strings.Contains(strings.Join(near.Notes, " "), "nobody has measured") {
+		t.Errorf("%v: %v", err, near.Notes)
+	}
+}
+
 func TestPeakModels(t *testing.T) {
 	t.Parallel()
 	var tables PeakTables

@@ -81,17 +81,27 @@ func (m *PeakModel) Describe() string {
 }
 
 // DefaultPeakModel is the line model fitted to measured LEDs of the colour that
-// most of the peaks have.
+// most of the peaks have; nil when most lie where no default line holds.
 func DefaultPeakModel(peakNM []float64) *PeakModel {
 	best, most := 0, -1
 	var counts [8]int
+	within, of := 0, 0
 	for _, p := range peakNM {
+		if p == p {
+			of++
+		}
+		if p >= LowestDefaultNM && p <= HighestDefaultNM {
+			within++
+		}
 		for i := range measuredLines {
 			if p <= measuredLines[i].toNM {
 				counts[i]++
 				break
 			}
 		}
+	}
+	if 2*within < of {
+		return nil
 	}
 	for i := range measuredLines {
 		if counts[i] > most {

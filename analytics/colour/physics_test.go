@@ -114,8 +114,16 @@ func TestSuspects(t *testing.T) {
 			t.Errorf("%s: %q, want %q", c.name, got, c.want)
 		}
 	}
-	if says := CheckDies(micro)[0].Says; !strings.HasPrefix(says, "1,000 of 1,000 dies: more photons come out") {
-		t.Errorf("%s", says)
+	// 90 W at 455 nm and 150 mA: 90000·455/(150·1239.84) photons an electron; 90 W of 0.48 W.
+	for i, want := range []string{"1,000 of 1,000 dies: more photons come out than electrons go in at 150 mA (quantum efficiency 220.19)",
+		"1,000 of 1,000 dies: more light comes out than power goes in at 150 mA (wall-plug efficiency 187.50)"} {
+		if says := CheckDies(micro)[i].Says; says != want {
+			t.Errorf("%q, want %q", says, want)
+		}
+	}
+	// 3.2 mV at 455 nm, whose photon has 2.725 eV.
+	if says := CheckDies(milli)[0].Says; says != "1,000 of 1,000 dies: the forward voltage is only 0.00 of the photon's energy" {
+		t.Errorf("%q", says)
 	}
 }
 

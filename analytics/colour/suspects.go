@@ -60,15 +60,15 @@ func CheckDies(in DieReadings) []Suspect {
 	const fluxCause = "the unit of flux (µW read as mW), the sphere's calibration factor, or the current setting"
 	if flux != nil && wavelength != nil && current > 0 {
 		found = judge(found, QuantumAboveOne, product{flux, wavelength, 1 / (current * photonEVNM)}, func(v float64) bool { return v > 1 },
-			"more photons come out than electrons go in at %[2]g mA (quantum efficiency %[1].2f)", current, fluxCause)
+			"more photons come out than electrons go in at %[2]g mA (quantum efficiency %.2[1]f)", current, fluxCause)
 	}
 	if flux != nil && volt != nil && current > 0 {
 		found = judge(found, WallPlugAboveOne, quotient{flux, volt, 1 / current}, func(v float64) bool { return v > 1 },
-			"more light comes out than power goes in at %[2]g mA (wall-plug efficiency %[1].2f)", current, fluxCause)
+			"more light comes out than power goes in at %[2]g mA (wall-plug efficiency %.2[1]f)", current, fluxCause)
 	}
 	if volt != nil && wavelength != nil {
 		found = judge(found, VoltageTooLow, product{volt, wavelength, 1 / photonEVNM}, func(v float64) bool { return v < lowVoltage },
-			"the forward voltage is only %[1].2f of the photon's energy", current,
+			"the forward voltage is only %.2[1]f of the photon's energy", current,
 			"the unit of voltage (mV read as V), the current setting (a reading at a small test current), or shorted contacts")
 	}
 	return found

@@ -185,7 +185,9 @@ func (d *Deriver) fromPeak(w *work) error {
 	}
 	model := w.Model
 	if model == nil {
-		model = colour.DefaultPeakModel(peak)
+		if model = colour.DefaultPeakModel(peak); model == nil {
+			return nil
+		}
 	}
 	values := w.buffer(len(peak))
 	if err := d.models.Dominant(values, model, peak, w.values("fwhm_nm")); err != nil {
