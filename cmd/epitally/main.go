@@ -41,6 +41,7 @@ func commands() []command {
 		{"calc colour", "colour and efficiency of a spectrum, a chromaticity, or a peak and width", calcColour},
 		{"calc peak-model", "fit how a recipe's dominant wavelength follows from its peak", calcPeakModel},
 		{"calc summary", "summarise one column of a CSV file", calcSummary},
+		{"doctor", "examine the database: what is wrong in it, and what to do", doctor},
 		{"gallery", "write every page from canned data as files, without a database", gallery},
 		{"health", "ask a running server whether it is ready", health},
 		{"version", "print the version", printVersion},

@@ -121,8 +121,8 @@ func specCompare(ctx context.Context, c *console, args []string) error {
 		if err != nil {
 			return err
 		}
-		bar := newBar(c.err, int64(len(list)))
-		cmp, err := store.CompareSpecs(ctx, specs[0], specs[1], list, func(done, _ int) { bar.Set(done) })
+		bar := newCountBar(c, "binning wafers twice")
+		cmp, err := store.CompareSpecs(ctx, specs[0], specs[1], list, func(done, total int) { setBar(bar, done, total) })
 		if err != nil {
 			return err
 		}

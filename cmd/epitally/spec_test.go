@@ -166,3 +166,16 @@ func TestSpecCheckLooksAtDies(t *testing.T) {
 		t.Errorf("%v: %s%s", err, out, said)
 	}
 }
+
+// TestDoctorBesideARunningServer examines the invented fab while its server runs.
+func TestDoctorBesideARunningServer(t *testing.T) {
+	t.Parallel()
+	_, c := greenFab(t)
+	out, said, err := runCommand(t, "doctor", "--data", c.Data)
+	if err != nil || !strings.HasPrefix(out, "The database is sound: every plane decodes") {
+		t.Errorf("%v: %s%s", err, out, said)
+	}
+	if out, _, err = runCommand(t, "doctor", "--data", c.Data, "--quick", "--json"); err != nil || strings.TrimSpace(out) != "[]" {
+		t.Errorf("%v: %s", err, out)
+	}
+}
