@@ -9,6 +9,7 @@ import (
 	"time"
 
 	"github.com/labstack/echo/v4"
+	"github.com/prometheus/client_golang/prometheus"
 
 	"epitally/db"
 	"epitally/web"
@@ -16,13 +17,15 @@ import (
 
 // Config is what a Server needs.
 type Config struct {
-	Store      *db.Store
-	Pages      *web.Pages
-	Logger     *slog.Logger     // nil = none
-	Now        func() time.Time // nil = the system's clock
-	Zone       *time.Location   // the fab's; nil = UTC
-	RequestID  func() string    // names a request that bears no id of its own; nil = random
-	DropFolder string           // where the fab's files are dropped, for people; "" = not said
+	Store     *db.Store
+	Pages     *web.Pages
+	Logger    *slog.Logger     // nil = none
+	Now       func() time.Time // nil = the system's clock
+	Zone      *time.Location   // the fab's; nil = UTC
+	RequestID func() string    // names a request that bears no id of its own; nil = random
+	// Metrics takes and gives the server's figures at /metrics; nil = they are not served.
+	Metrics    *prometheus.Registry
+	DropFolder string // where the fab's files are dropped, for people; "" = not said
 }
 
 // Server answers HTTP requests. It holds *db.Store itself rather than an
@@ -67,11 +70,22 @@ func New(c Config) (*Server, error) {
 	s.echo = echo.New()
 	s.echo.HideBanner, s.echo.HidePort = true, true
 	s.echo.HTTPErrorHandler = s.answerError
-	s.echo.Use(s.identify, s.logAccess, secure, s.press.middleware, s.catch, s.guard)
+	s.echo.Use(s.identify, s.logAccess)
+	if c.Metrics != nil {
+		m, err := newRequestMetrics(c.Metrics)
+		if err != nil {
+			return nil, fmt.Errorf("api: %w", err)
+		}
+		s.echo.Use(m.observe(s.now))
+	}
+	s.echo.Use(secure, s.press.middleware, s.catch, s.guard)
 	if err := s.registerRoutes(); err != nil {
 		return nil, fmt.Errorf("api: %w", err)
 	}
 	s.registerPages(s.echo)
+	if c.Metrics != nil {
+		registerMetrics(s.echo, c.Metrics)
+	}
 	return s, nil
 }
 

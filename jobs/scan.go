@@ -24,6 +24,9 @@ type Scanner struct {
 	// Done, when not nil, is told of every source filed away, and of how many
 	// the scan set out to load. It is called from several goroutines.
 	Done func(src db.Source, err error, total int)
+	// Metrics counts what is loaded; nil = nothing is counted.
+	Metrics *Metrics
+	now     func() time.Time
 }
 
 // ScanResult is what one scan did.
@@ -35,7 +38,7 @@ type ScanResult struct {
 
 // NewScanner makes a scanner with the given number of workers.
 func NewScanner(folder *Folder, c LoaderConfig, workers int) *Scanner {
-	s := &Scanner{folder: folder, store: c.Store, log: c.Logger}
+	s := &Scanner{folder: folder, store: c.Store, log: c.Logger, now: c.Now}
 	for range max(workers, 1) {
 		s.loaders = append(s.loaders, NewLoader(c))
 	}
@@ -94,6 +97,7 @@ func (s *Scanner) Scan(ctx context.Context) (ScanResult, error) {
 		return result, err
 	}
 	result.Took = time.Since(start)
+	s.Metrics.scanned(result)
 	return result, ctx.Err()
 }
 
@@ -120,8 +124,9 @@ feed:
 }
 
 // one loads one file and files it away.
-func (s *Scanner) one(ctx context.Context, l *Loader, f dropped, profiles []reader.Profile) (db.Source, error) {
+func (s *Scanner) one(ctx context.Context, l *Loader, f dropped, profiles []reader.Profile) (filed db.Source, failed error) {
 	src, err := s.read(ctx, l, f, profiles)
+	defer func() { s.Metrics.filed(filed, failed, f.info.ModTime(), s.now()) }()
 	log := s.log.With("source", f.name, "bytes", f.info.Size())
 	switch {
 	case err == nil:

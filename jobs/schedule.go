@@ -79,6 +79,7 @@ func (s *Schedule) Scan() {
 	switch {
 	case s.ctx.Err() != nil:
 	case err != nil:
+		s.scanner.Metrics.jobFailed("scan")
 		s.log.Error("scan of the drop folder failed; the next one tries again", "error", err)
 	case result.Stored+result.Refused > 0:
 		s.log.Info("scanned", "stored", result.Stored, "refused", result.Refused, "left", result.Left, "dies", result.Dies, "took", result.Took)
@@ -90,6 +91,7 @@ func (s *Schedule) Scan() {
 func (s *Schedule) partitions() {
 	now := s.now()
 	if err := s.store.EnsurePartitions(s.ctx, now.AddDate(0, -1, 0), now.AddDate(0, 2, 0)); err != nil && s.ctx.Err() == nil {
+		s.scanner.Metrics.jobFailed("partitions")
 		s.log.Error("partitions could not be made ahead; loading makes them when needed", "error", err)
 	}
 }

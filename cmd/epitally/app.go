@@ -12,6 +12,9 @@ import (
 	"path/filepath"
 	"time"
 
+	"github.com/prometheus/client_golang/prometheus"
+	"github.com/prometheus/client_golang/prometheus/collectors"
+
 	"epitally/api"
 	"epitally/db"
 	"epitally/db/localpg"
@@ -55,6 +58,11 @@ func New(ctx context.Context, c Config, log *slog.Logger) (app *App, err error) 
 		return nil, err
 	}
 	a.Scanner = jobs.NewScanner(a.folder, loaderConfig(c, a.Store, log, zone), c.Workers)
+	metrics := prometheus.NewRegistry()
+	metrics.MustRegister(collectors.NewGoCollector(), collectors.NewProcessCollector(collectors.ProcessCollectorOpts{}))
+	if a.Scanner.Metrics, err = jobs.NewMetrics(metrics); err != nil {
+		return nil, err
+	}
 	a.schedule, err = jobs.NewSchedule(jobs.ScheduleConfig{Scanner: a.Scanner, Store: a.Store, Logger: log, Now: time.Now, Scan: c.Scan})
 	if err != nil {
 		return nil, err
@@ -63,7 +71,7 @@ func New(ctx context.Context, c Config, log *slog.Logger) (app *App, err error) 
 	if err != nil {
 		return nil, err
 	}
-	handler, err := api.New(api.Config{Store: a.Store, Pages: pages, Logger: log, Now: time.Now, Zone: zone, DropFolder: c.Drop})
+	handler, err := api.New(api.Config{Store: a.Store, Pages: pages, Logger: log, Now: time.Now, Zone: zone, DropFolder: c.Drop, Metrics: metrics})
 	if err != nil {
 		return nil, err
 	}

@@ -2,9 +2,11 @@ package main
 
 import (
 	"encoding/json"
+	"io"
 	"net/http"
 	"os"
 	"path/filepath"
+	"strconv"
 	"strings"
 	"testing"
 
@@ -164,6 +166,38 @@ func TestSpecCheckLooksAtDies(t *testing.T) {
 	out, said, err := runCommand(t, "spec", "check", file, "--data", c.Data, "--last", "5")
 	if err != nil || !strings.Contains(out, "dies lie there") || !strings.Contains(out, "empty: no die of the last ") {
 		t.Errorf("%v: %s%s", err, out, said)
+	}
+}
+
+// TestMetricsTellWhatWasLoaded reads what a monitoring system would.
+func TestMetricsTellWhatWasLoaded(t *testing.T) {
+	t.Parallel()
+	app, _ := greenFab(t)
+	page(t, app.URL()+"/wafers", http.StatusOK)
+	answer, err := http.Get(app.URL() + "/metrics")
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer answer.Body.Close()
+	text, err := io.ReadAll(answer.Body)
+	if err != nil || answer.StatusCode != http.StatusOK {
+		t.Fatalf("%d %v", answer.StatusCode, err)
+	}
+	figures := map[string]float64{}
+	for _, line := range strings.Split(string(text), "\n") {
+		if name, value, ok := strings.Cut(line, " "); ok && !strings.HasPrefix(line, "#") {
+			if figures[name], err = strconv.ParseFloat(value, 64); err != nil {
+				t.Errorf("%q: %v", line, err)
+			}
+		}
+	}
+	if figures[`epitally_sources_total{state="stored"}`] < 16 || figures[`epitally_sources_total{state="refused"}`] != 0 || figures["epitally_dies_stored_total"] < 50_000 ||
+		figures["epitally_wafers_stored_total"] != 16 || figures["epitally_source_lag_seconds_count"] != figures[`epitally_sources_total{state="stored"}`] ||
+		figures[`epitally_request_seconds_count{method="GET",route="/wafers",status="200"}`] != 1 || figures["epitally_scan_seconds_count"] < 1 {
+		t.Errorf("%v", figures)
+	}
+	if _, there := figures[`epitally_sources_total{state="refused"}`]; !there {
+		t.Error("refusals are not counted from the start")
 	}
 }
 

@@ -24,6 +24,7 @@ var onlyUnder = map[string][]string{
 	"github.com/labstack/echo":    {"api", "cmd"},
 	"github.com/robfig/cron":      {"jobs", "cmd"},
 	"github.com/go-echarts":       {"web"},
+	"github.com/prometheus":       {"api", "jobs", "cmd"},
 	"github.com/chromedp":         {"cmd", "web"},
 	"net/http":                    {"api", "web", "cmd"},
 	"database/sql":                {"db"},
