@@ -91,6 +91,7 @@ func (s *Server) routes() []route {
 		get(one+"/tally", "getTally", "Bin the dies now, under any stored specification", s.getTally, asJSON(rebinnedOut{}), csv),
 		post(one+"/tally", "makeTally", "Bin the dies now, under the specification in the body, which is not stored", s.makeTally, asJSON(rebinnedOut{}), csv),
 		kept(get(one+"/bins", "getBins", "Bin the dies now: the code of every die", s.getBins, plane, asJSON(binsOut{}))),
+		get(one+"/substrate-map.xml", "getSubstrateMap", "The bin of every die as a substrate map (SEMI E142)", s.getSubstrateMap, asMedia(mediaXML)),
 		kept(get(one+"/planes/{quantity}", "getPlane", "One quantity of every die", s.getPlane, plane, asJSON(planeOut{}), csv)),
 		get(one+"/dies", "listDies", "Every die with every quantity, or those named", s.listDies, csv, asJSON(diesOut{})),
 		get(one+"/dies/{x}/{y}", "getDie", "One die: its place, its values, its bin", s.getDie, asJSON(dieOut{})),

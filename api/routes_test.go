@@ -23,6 +23,7 @@ func (f *fixture) targets() map[string]string {
 		"listTallies":             one + "/tallies",
 		"getTally":                one + "/tally?specification=harbour-blue",
 		"getBins":                 one + "/bins?specification=harbour-blue&version=1",
+		"getSubstrateMap":         one + "/substrate-map.xml?specification=harbour-blue",
 		"getPlane":                one + "/planes/" + dominant,
 		"listDies":                one + "/dies?quantities=" + voltage,
 		"getDie":                  one + "/dies/-3/4?specification=harbour-blue&version=1",

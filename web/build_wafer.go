@@ -291,10 +291,14 @@ func (in *WaferInput) notices() []string {
 
 func (in *WaferInput) downloads() []Fact {
 	api := in.Measurement.api()
-	return []Fact{
+	out := []Fact{
 		{Name: "All dies as CSV", Href: api + "/dies?format=csv"},
 		{Name: "Figures as JSON", Href: api + "/summaries"},
 	}
+	if in.Spec != nil {
+		out = append(out, Fact{Name: "Bins as a substrate map", Href: api + "/substrate-map.xml?" + in.Spec.under()})
+	}
+	return out
 }
 
 func growthFacts(g Growth, zone *time.Location) []Fact {
