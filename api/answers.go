@@ -117,7 +117,7 @@ func answerTable(c echo.Context, format string, v any, makeTable func() table) e
 }
 
 // formatMedia is the media type of each word that format= takes.
-var formatMedia = map[string]string{"json": mediaJSON, "csv": "text/csv", "yaml": mediaYAML, "plane": mediaPlane, "grid": mediaGrid}
+var formatMedia = map[string]string{"json": mediaJSON, "csv": "text/csv", "yaml": mediaYAML, "plane": mediaPlane, "grid": mediaGrid, "parquet": mediaParquet, "xlsx": mediaXLSX}
 
 // chooseFormat gives the word asked for with format=, else the offer that the
 // Accept header weighs highest, else the first offer, which is also the answer

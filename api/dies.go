@@ -2,6 +2,7 @@ package api
 
 import (
 	"bufio"
+	"bytes"
 	"encoding/json"
 	"fmt"
 	"math"
@@ -20,7 +21,7 @@ import (
 type diesParams struct {
 	measurementParams
 	Quantities []string `query:"quantities" doc:"names of quantities, separated by commas; else all"`
-	Format     string   `query:"format" enum:"csv,json" doc:"overrides the Accept header"`
+	Format     string   `query:"format" enum:"csv,json,parquet,xlsx" doc:"overrides the Accept header"`
 }
 
 type diesOut struct {
@@ -44,8 +45,11 @@ func (s *Server) listDies(c echo.Context, p diesParams) error {
 			return invalidParam("quantities", "name it once", "%s stands twice", name)
 		}
 	}
-	if chooseFormat(c, p.Format, "csv", "json") == "csv" {
-		download(c, fmt.Sprintf("%s-%d.csv", m.Wafer, m.ID))
+	format := chooseFormat(c, p.Format, "csv", "json", "parquet", "xlsx")
+	if format != "json" {
+		download(c, fmt.Sprintf("%s-%d.%s", m.Wafer, m.ID, format))
+	}
+	if format == "csv" {
 		c.Response().Header().Set("Content-Type", mediaCSV)
 		return s.store.WriteDiesCSV(ctx, c.Response(), m, p.Quantities...)
 	}
@@ -56,6 +60,18 @@ func (s *Server) listDies(c echo.Context, p diesParams) error {
 	grid, err := s.store.Grid(ctx, m.GridHash)
 	if err != nil {
 		return err
+	}
+	switch format {
+	case "parquet", "xlsx":
+		var b bytes.Buffer
+		write, media := writeParquet, mediaParquet
+		if format == "xlsx" {
+			write, media = writeXLSX, mediaXLSX
+		}
+		if err := write(&b, grid, planes); err != nil {
+			return err
+		}
+		return c.Blob(http.StatusOK, media, b.Bytes())
 	}
 	return stream(c, mediaJSON, func(w *bufio.Writer) { writeDiesJSON(w, m, grid, planes) })
 }

@@ -93,7 +93,7 @@ func (s *Server) routes() []route {
 		kept(get(one+"/bins", "getBins", "Bin the dies now: the code of every die", s.getBins, plane, asJSON(binsOut{}))),
 		get(one+"/substrate-map.xml", "getSubstrateMap", "The bin of every die as a substrate map (SEMI E142)", s.getSubstrateMap, asMedia(mediaXML)),
 		kept(get(one+"/planes/{quantity}", "getPlane", "One quantity of every die", s.getPlane, plane, asJSON(planeOut{}), csv)),
-		get(one+"/dies", "listDies", "Every die with every quantity, or those named", s.listDies, csv, asJSON(diesOut{})),
+		get(one+"/dies", "listDies", "Every die with every quantity, or those named", s.listDies, csv, asJSON(diesOut{}), asMedia(mediaParquet), asMedia(mediaXLSX)),
 		get(one+"/dies/{x}/{y}", "getDie", "One die: its place, its values, its bin", s.getDie, asJSON(dieOut{})),
 		kept(get(one+"/map.png", "getMap", "The map of a quantity, or of the bins under a specification, as a picture", s.getMap, png)),
 		kept(get(one+"/small-map.png", "getSmallMap", "The small map that lists show", s.getSmallMap, png)),

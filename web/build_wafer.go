@@ -293,6 +293,8 @@ func (in *WaferInput) downloads() []Fact {
 	api := in.Measurement.api()
 	out := []Fact{
 		{Name: "All dies as CSV", Href: api + "/dies?format=csv"},
+		{Name: "as Parquet", Href: api + "/dies?format=parquet"},
+		{Name: "as XLSX", Href: api + "/dies?format=xlsx"},
 		{Name: "Figures as JSON", Href: api + "/summaries"},
 	}
 	if in.Spec != nil {
