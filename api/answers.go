@@ -23,6 +23,7 @@ const (
 	mediaJSON  = "application/json"
 	mediaCSV   = "text/csv; charset=utf-8"
 	mediaPNG   = "image/png"
+	mediaBytes = "application/octet-stream"
 	mediaYAML  = "application/yaml"
 	mediaPlane = "application/vnd.epitally.plane"
 	mediaGrid  = "application/vnd.epitally.grid"

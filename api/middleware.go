@@ -122,11 +122,15 @@ func (s *Server) guard(next echo.HandlerFunc) echo.HandlerFunc {
 		if err := s.crossOrigin.Check(r); err != nil {
 			return echo.NewHTTPError(http.StatusForbidden, "this request comes from a page of another site; send it from this server's own pages or from a program")
 		}
-		if r.ContentLength > maxBody {
-			return fmt.Errorf("the body has %d bytes; send at most %d: %w", r.ContentLength, maxBody, analytics.ErrTooLarge)
+		limit := int64(maxBody)
+		if s.uploads != nil && c.Path() == uploadPath {
+			limit = s.uploads.Limit
+		}
+		if r.ContentLength > limit {
+			return fmt.Errorf("the body has %d bytes; send at most %d: %w", r.ContentLength, limit, analytics.ErrTooLarge)
 		}
 		if r.Body != nil && r.Body != http.NoBody {
-			r.Body = http.MaxBytesReader(c.Response(), r.Body, maxBody)
+			r.Body = http.MaxBytesReader(c.Response(), r.Body, limit+1)
 		}
 		return next(c)
 	}

@@ -58,6 +58,9 @@ func operation(r route, schemas *schemas) object {
 	}
 	if r.body != nil {
 		content, schema, description := object{}, object{"type": "string"}, "a specification document"
+		if r.body[0] == mediaBytes {
+			schema, description = object{"type": "string", "format": "binary"}, "the file"
+		}
 		if r.takes != nil {
 			schema, description = schemas.of(reflect.TypeOf(r.takes)), "what to work out"
 		}

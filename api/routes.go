@@ -56,6 +56,12 @@ func post[P any](path, id, summary string, h func(echo.Context, P) error, answer
 	return r
 }
 
+// takesBytes makes a route take a file as it is.
+func takesBytes(r route) route {
+	r.body = []string{mediaBytes}
+	return r
+}
+
 // takesJSON makes a route take JSON of the sample's type.
 func takesJSON(r route, sample any) route {
 	r.body, r.takes = []string{mediaJSON}, sample
@@ -116,6 +122,7 @@ func (s *Server) routes() []route {
 		get(root+"/runs", "listRuns", "Growth runs, newest first", s.listRuns, asJSON(runsOut{}), csv),
 		get(root+"/profiles", "listProfiles", "The latest version of every reading profile", s.listProfiles, asJSON(profilesOut{})),
 		get(root+"/sources", "listSources", "Files that data came from, newest first", s.listSources, asJSON(sourcesOut{}), csv),
+		takesBytes(post(uploadPath, "uploadSource", "Upload a file into the drop folder; it is loaded within seconds, as its source tells", s.uploadSource, asJSON(uploadOut{}).as(http.StatusAccepted))),
 		get(root+"/sources/{id}", "getSource", "One source", s.getSource, asJSON(sourceOut{})),
 	}
 }

@@ -23,6 +23,7 @@ type Config struct {
 	Now       func() time.Time // nil = the system's clock
 	Zone      *time.Location   // the fab's; nil = UTC
 	RequestID func() string    // names a request that bears no id of its own; nil = random
+	Uploads   *Uploads         // nil = none are taken
 	// Metrics takes and gives the server's figures at /metrics; nil = they are not served.
 	Metrics    *prometheus.Registry
 	DropFolder string // where the fab's files are dropped, for people; "" = not said
@@ -31,17 +32,18 @@ type Config struct {
 // Server answers HTTP requests. It holds *db.Store itself rather than an
 // interface of its own: handlers use nearly every reading method of it.
 type Server struct {
-	echo   *echo.Echo
-	store  *db.Store
-	pages  *web.Pages
-	log    *slog.Logger
-	now    func() time.Time
-	zone   *time.Location
-	newID  func() string
-	drop   string
-	press  *compressor
-	specs  specCache
-	chosen selections
+	echo    *echo.Echo
+	store   *db.Store
+	pages   *web.Pages
+	log     *slog.Logger
+	now     func() time.Time
+	zone    *time.Location
+	newID   func() string
+	drop    string
+	press   *compressor
+	specs   specCache
+	chosen  selections
+	uploads *Uploads
 	// document is the OpenAPI document, and documentTag its strong ETag.
 	document    []byte
 	documentTag string
@@ -53,7 +55,7 @@ func New(c Config) (*Server, error) {
 	if c.Store == nil || c.Pages == nil {
 		return nil, errors.New("api: Store and Pages are needed")
 	}
-	s := &Server{store: c.Store, pages: c.Pages, log: c.Logger, now: c.Now, zone: c.Zone, newID: c.RequestID, drop: c.DropFolder,
+	s := &Server{store: c.Store, pages: c.Pages, log: c.Logger, now: c.Now, zone: c.Zone, newID: c.RequestID, drop: c.DropFolder, uploads: c.Uploads,
 		press: newCompressor(), crossOrigin: http.NewCrossOriginProtection()}
 	if s.log == nil {
 		s.log = slog.New(slog.DiscardHandler)

@@ -86,6 +86,21 @@ func (s *Schedule) Scan() {
 	}
 }
 
+// ScanSoon scans when what came in has settled, beside the schedule; it returns at
+// once. A schedule that does not run yet or no more does nothing.
+func (s *Schedule) ScanSoon() {
+	if s.ctx == nil || s.ctx.Err() != nil {
+		return
+	}
+	s.running.Go(func() {
+		select {
+		case <-time.After(s.scanner.folder.settle + 50*time.Millisecond):
+			s.Scan()
+		case <-s.ctx.Done():
+		}
+	})
+}
+
 // partitions keeps the months around today ready, so that loading seldom has to
 // make one.
 func (s *Schedule) partitions() {

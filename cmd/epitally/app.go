@@ -71,7 +71,8 @@ func New(ctx context.Context, c Config, log *slog.Logger) (app *App, err error) 
 	if err != nil {
 		return nil, err
 	}
-	handler, err := api.New(api.Config{Store: a.Store, Pages: pages, Logger: log, Now: time.Now, Zone: zone, DropFolder: c.Drop, Metrics: metrics})
+	handler, err := api.New(api.Config{Store: a.Store, Pages: pages, Logger: log, Now: time.Now, Zone: zone, DropFolder: c.Drop, Metrics: metrics,
+		Uploads: &api.Uploads{To: a.folder, Limit: c.MaxFileMB * 1e6, Scan: a.schedule.ScanSoon}})
 	if err != nil {
 		return nil, err
 	}

@@ -9,6 +9,7 @@ import (
 	"strconv"
 	"strings"
 	"testing"
+	"time"
 
 	"github.com/chromedp/chromedp"
 
@@ -198,6 +199,42 @@ func TestMetricsTellWhatWasLoaded(t *testing.T) {
 	}
 	if _, there := figures[`epitally_sources_total{state="refused"}`]; !there {
 		t.Error("refusals are not counted from the start")
+	}
+}
+
+// TestUploadsAreLoaded sends a file as the page and a station's script do, and
+// finds its wafer; what is no file is refused.
+func TestUploadsAreLoaded(t *testing.T) {
+	t.Parallel()
+	c := testConfig(t)
+	app := startApp(t, c, func(*App) {})
+	send := func(name, content string) (int, string) {
+		t.Helper()
+		answer, err := http.Post(app.URL()+"/api/v1/sources?name="+name, "application/octet-stream", strings.NewReader(content))
+		if err != nil {
+			t.Fatal(err)
+		}
+		defer answer.Body.Close()
+		text, _ := io.ReadAll(answer.Body)
+		return answer.StatusCode, string(text)
+	}
+	if status, text := send("one.csv", tinyCSV); status != http.StatusAccepted || !strings.Contains(text, `"source":"one.csv"`) {
+		t.Fatalf("%d %s", status, text)
+	}
+	limit := time.Now().Add(20 * time.Second)
+	for {
+		if _, err := app.Store.Wafer(t.Context(), "T-1"); err == nil {
+			break
+		}
+		if time.Now().After(limit) {
+			t.Fatal("the uploaded file was not loaded")
+		}
+		app.schedule.Scan()
+	}
+	for name, want := range map[string]int{"..%2Fout.csv": http.StatusBadRequest, "": http.StatusBadRequest, "a%00b": http.StatusBadRequest} {
+		if status, text := send(name, "x"); status != want || !strings.Contains(text, "detail") {
+			t.Errorf("%q: %d %s", name, status, text)
+		}
 	}
 }
 

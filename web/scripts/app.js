@@ -4,6 +4,7 @@ import { startMap } from './map.js';
 import { startChooser } from './chooser.js';
 import { drawSwatches } from './swatch.js';
 import { startEditor } from './editor.js';
+import { startUpload } from './upload.js';
 
 function startGround() {
   const button = document.getElementById('ground');
@@ -32,6 +33,7 @@ drawSwatches();
 const map = startMap();
 startChooser(map);
 startEditor();
+startUpload();
 document.addEventListener('ground', () => {
   setSmallMaps();
   drawSwatches();
