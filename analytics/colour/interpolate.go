@@ -6,11 +6,12 @@ import (
 	"sort"
 )
 
-// fine is the spectrum at steps of 1 nm or less.
+// fine is the spectrum at steps of 1 nm or less. A spectrum of which most steps are
+// that fine is left as it is: an array spectrometer's, thinned where it is straight.
 func (s *Spectrum) fine() *Spectrum {
 	step, regular := s.step()
 	switch {
-	case step <= 1+1e-9:
+	case s.medianStep() <= 1+1e-9:
 		return s
 	case regular && len(s.nm) >= 6:
 		if smooth := s.resampled(s.sprague(step)); slices.Min(smooth.power) >= min(0, slices.Min(s.power))-noiseFloor*slices.Max(s.power) {
@@ -27,6 +28,14 @@ func (s *Spectrum) step() (widest float64, regular bool) {
 		widest, narrowest = max(widest, s.nm[i]-s.nm[i-1]), min(narrowest, s.nm[i]-s.nm[i-1])
 	}
 	return widest, widest-narrowest < 1e-6*widest
+}
+
+func (s *Spectrum) medianStep() float64 {
+	steps := make([]float64, len(s.nm)-1)
+	for i := range steps {
+		steps[i] = s.nm[i+1] - s.nm[i]
+	}
+	return median(steps)
 }
 
 // resampled takes an interpolation at the spectrum's points and at whole

@@ -104,17 +104,48 @@ func (s *Spectrum) checkEnds(highest float64) error {
 // first interpolated to 1 nm: with Sprague's fifth-order formula where the step is
 // regular (CIE 15:2018, 7.2.1, and CIE 167:2005), else by a monotone cubic (Fritsch
 // and Carlson, SIAM J. Numer. Anal. 17 (1980) 238), which also serves lines so narrow
-// for their step that Sprague's would swing below 0. Finer ones are integrated as
-// they are, piecewise linear against the linear observer. Outside its range the
-// spectrum is 0.
+// for their step that Sprague's would swing below 0. Finer ones are taken at the
+// whole nanometres, linear between their points, and summed there as CIE 15:2018,
+// 7.1 sums; a spectrum with lines so narrow that the sum would miss them is
+// integrated over all its points instead. Outside its range the spectrum is 0.
 func (s *Spectrum) XYZ() XYZ {
-	fine := s.fine()
-	var c XYZ
-	fine.each(func(nm, weighted float64) {
-		x, y, z := observerAt(nm)
-		c.X, c.Y, c.Z = c.X+weighted*x, c.Y+weighted*y, c.Z+weighted*z
-	})
+	c, _ := s.weighed()
 	return c
+}
+
+// missed is how far the sum over whole nanometres may be from the integral over
+// all points, in x, y and as a part of the power, before it misses something.
+const missed = 0.002
+
+// weighed is the tristimulus values with the power that they are of.
+func (s *Spectrum) weighed() (c XYZ, power float64) {
+	fine := s.fine()
+	add := func(c *XYZ, power *float64) func(nm, weighted float64) {
+		return func(nm, weighted float64) {
+			x, y, z := observerAt(nm)
+			c.X, c.Y, c.Z = c.X+weighted*x, c.Y+weighted*y, c.Z+weighted*z
+			*power += weighted
+		}
+	}
+	var integral XYZ
+	var whole float64
+	fine.each(add(&integral, &whole))
+	fine.eachWhole(add(&c, &power))
+	if c.XY().distance(integral.XY()) < missed && math.Abs(power-whole) < missed*whole {
+		return c, power
+	}
+	return integral, whole
+}
+
+// eachWhole walks the whole nanometres, linear between the points: power times
+// 1 nm.
+func (s *Spectrum) eachWhole(visit func(nm, weighted float64)) {
+	nm, power := s.merged()
+	for i, w := range nm {
+		if w == math.Floor(w) {
+			visit(w, power[i])
+		}
+	}
 }
 
 // each walks the trapezoidal rule over the spectrum's points and the whole
@@ -157,7 +188,10 @@ func (s *Spectrum) RadiantFlux() float64 {
 
 // LuminousEfficacy is the luminous efficacy of radiation in lm/W: 683 ∫ S V dλ over
 // ∫ S dλ (CIE S 017, 17-21-090).
-func (s *Spectrum) LuminousEfficacy() float64 { return KM * s.XYZ().Y / s.RadiantFlux() }
+func (s *Spectrum) LuminousEfficacy() float64 {
+	c, power := s.weighed()
+	return KM * c.Y / power
+}
 
 // CentroidNM is the mean wavelength, weighted by power, in nm.
 func (s *Spectrum) CentroidNM() float64 {

@@ -248,9 +248,6 @@ func TestMeasuredSpectra(t *testing.T) {
 			if c.name == "dominant" && d.ExcitationPurity < 0.1 {
 				continue // close to white a hundred-thousandth in x moves it more
 			}
-			if c.name == "dominant" && want > 640 {
-				c.tolerance = 0.06 // here 10⁻⁵ in x, the reference's last digit, is 0.03 nm
-			}
 			if math.Abs(c.got-want) > c.tolerance {
 				t.Errorf("%s: %s %.5f, want %.5f", row[0], c.name, c.got, want)
 			}
