@@ -192,9 +192,13 @@ func (s *Server) quickLook(t *db.Trial, ids []string, as shownAs) web.SpecLook {
 	if t.Risk != nil {
 		numbers.Risk, numbers.RiskCounts, numbers.RiskWafers = &t.Risk.Conformity, t.Risk.Counts, t.Risk.Wafers
 	}
-	look := web.SpecLook{Wafers: wafers, Good: t.Good(), Total: t.Denominator, Bins: web.NewBinTable(numbers),
+	look := web.SpecLook{Wafers: wafers, None: t.Wafers == 0, Good: t.Good(), Total: t.Denominator, Bins: web.NewBinTable(numbers),
 		Verdict: web.TrialSentence(t.Good(), t.Denominator, as.before, numbers.ConfidentShare(), wafers)}
-	plots := web.BinPlots{Spec: t.Spec, Counts: t.Counts, Whole: as.whole, Boxes: as.boxes, Edit: true}
+	counts := t.Counts
+	if t.Wafers == 0 {
+		counts = nil // nothing was counted, which is not 0
+	}
+	plots := web.BinPlots{Spec: t.Spec, Counts: counts, Whole: as.whole, Boxes: as.boxes, Edit: true}
 	if len(ids) > 0 {
 		plots.Density = func(d web.DensityPlot) string { return densityURL(d, ids) }
 	}

@@ -22,14 +22,15 @@ func (b BinPlots) region(r *binning.Region, d binning.Dimension, id string) BinP
 		f.density(b.Density(DensityPlot{X: r.Quantities[0], Y: r.Quantities[1], Space: r.Space,
 			Left: f.left, Right: f.right, Bottom: f.bottom, Top: f.top, Width: int(f.areaWidth()), Height: int(f.areaHeight())}))
 	}
+	var taken []textBox
 	if r.Space != binning.SpaceOwn {
-		f.diagram(r.Space)
+		taken = f.diagram(r.Space)
 	}
 	for i := range r.Cells {
 		b.regionCell(f, r, d, i)
 	}
 	edit := b.Edit && !b.Whole // handles would cover cells that small
-	taken := f.handleRoom(r, edit)
+	taken = append(taken, f.handleRoom(r, edit)...)
 	for i := range r.Cells {
 		b.regionLabel(f, r, d, i, &taken)
 	}
@@ -123,8 +124,8 @@ func placesOf(name string) int {
 }
 
 // diagram draws the spectral locus, the purple line, the Planckian locus and the
-// equal-energy white.
-func (f *frame) diagram(space binning.Space) {
+// equal-energy white. It gives the room that their names take.
+func (f *frame) diagram(space binning.Space) (names []textBox) {
 	in := func(p colour.XY) (x, y float64) {
 		if space == binning.SpaceUV {
 			q := p.UV()
@@ -138,7 +139,6 @@ func (f *frame) diagram(space binning.Space) {
 		fmt.Fprintf(&path, "%s %s ", at(f.x(x)), at(f.y(y)))
 	}
 	f.put(`<polygon class="locus" points="%s"/>`, path.String())
-	var names []textBox
 	x, y := in(colour.WhiteE)
 	f.spot("white-mark", x, y, 4, "white E", &names)
 	for _, nm := range []int{460, 470, 480, 490, 500, 510, 520, 530, 540, 550, 560, 570, 580, 590, 600, 620, 640} {
@@ -155,6 +155,7 @@ func (f *frame) diagram(space binning.Space) {
 		x, y := in(colour.Planckian(kelvin))
 		f.spot("planckian-mark", x, y, 2.5, With(kelvin, 0, "K"), &names)
 	}
+	return names
 }
 
 // spot marks a place inside the plotting area with its name, to the right, the

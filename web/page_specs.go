@@ -54,6 +54,7 @@ type VersionLine struct {
 // SpecLook is what a specification does to the dies of some wafers.
 type SpecLook struct {
 	Wafers   string // "the last 20 wafers"
+	None     bool   // there are no wafers to look at
 	Plots    []BinPlot
 	Bins     BinTable
 	Findings []SpecFinding

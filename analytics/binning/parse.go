@@ -115,6 +115,9 @@ func parseSpec(root yamldoc.Node) (*draft, error) {
 			}
 		}
 	}
+	if !f["bins"].Is() {
+		d.all = true
+	}
 	if len(d.rules) == 0 && len(d.axes) == 0 && len(d.regions) == 0 {
 		return nil, root.Fault("add rejects, regions or axes", "the specification tests nothing")
 	}

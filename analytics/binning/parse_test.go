@@ -215,3 +215,14 @@ func FuzzParse(f *testing.F) {
 		}
 	})
 }
+
+// Without a word about bins all of them are sellable, as with bins that do not say.
+func TestBinsAreSellableUnlessSaidOtherwise(t *testing.T) {
+	t.Parallel()
+	const axes = "specification: s\nkind: pl\naxes: [{axis: W, quantity: peak_wavelength_nm, edges: [450, 455]}]\n"
+	for _, document := range []string{axes, axes + "bins: {name: \"{W}\"}\n", axes + "bins: {sellable: all}\n"} {
+		if c := mustParse(t, document).Cells()[0]; c != (Cell{Name: "W1", Class: Sellable}) {
+			t.Errorf("%s: %+v", document, c)
+		}
+	}
+}
